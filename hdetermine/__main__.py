@@ -1,0 +1,5 @@
+"""``python -m hdetermine``."""
+
+from hdetermine.cli import main
+
+main()

@@ -1,0 +1,81 @@
+"""The command line: the only place that prints, exits or reads arguments."""
+
+from __future__ import annotations
+
+import importlib
+import signal
+import sys
+from types import FrameType
+
+import click
+
+from hdetermine import __version__
+from hdetermine.errors import InputError
+
+# One module a command, imported only when the command is used: help must come at once.
+COMMANDS: dict[str, tuple[str, str]] = {
+    "analyse": ("hdetermine.cli.analyse", "Turn a folder of counts into h and a report."),
+    "budget": ("hdetermine.cli.budget", "Print, write and probe the uncertainty budget."),
+    "check": ("hdetermine.cli.check", "Check a class: data, claims and likely slips."),
+    "draft": ("hdetermine.cli.draft", "Write a run sheet from what a folder holds."),
+    "schema": ("hdetermine.cli.schema", "Print the JSON Schema of result.json."),
+    "simulate": ("hdetermine.cli.simulate", "Make a run whose truth is known."),
+}
+OTHER_SPELLINGS = {"analyze": "analyse"}
+
+
+class CommandTable(click.Group):
+    """Commands that are imported when they are called."""
+
+    def list_commands(self, ctx: click.Context) -> list[str]:
+        """Name the commands in the order of the help page."""
+        return list(COMMANDS)
+
+    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:
+        """Import a command; other spellings lead to the same one."""
+        name = OTHER_SPELLINGS.get(cmd_name, cmd_name)
+        if name not in COMMANDS:
+            return None
+        command = importlib.import_module(COMMANDS[name][0]).command
+        assert isinstance(command, click.Command)
+        return command
+
+    def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
+        """List the commands without importing them."""
+        with formatter.section("Commands"):
+            formatter.write_dl([(name, text) for name, (_, text) in COMMANDS.items()])
+
+
+@click.group(cls=CommandTable, context_settings={"help_option_names": ["-h", "--help"]})
+@click.version_option(__version__, prog_name="hdetermine", message="%(prog)s %(version)s")
+def root() -> None:
+    """Determine the Planck constant from X-ray tube spectra, and say how sure it is.
+
+    X-rays and high voltage can hurt: measure only in an interlocked, type-approved enclosure
+    and under your local rules.
+    """
+
+
+def _terminated(_number: int, _frame: FrameType | None) -> None:
+    raise KeyboardInterrupt
+
+
+def main(arguments: list[str] | None = None) -> None:
+    """Run the command line and end the process with its exit status.
+
+    0: done; 1: done, but a judgement asked for failed; 2: bad input, said in one sentence;
+    130: interrupted.
+    """
+    signal.signal(signal.SIGTERM, _terminated)
+    try:
+        status = root.main(args=arguments, standalone_mode=False)
+    except InputError as error:
+        click.echo(f"hdetermine: {error}", err=True)
+        sys.exit(2)
+    except click.ClickException as error:
+        click.echo(f"hdetermine: {error.format_message()}", err=True)
+        sys.exit(2)
+    except (KeyboardInterrupt, click.Abort):
+        click.echo("hdetermine: interrupted; nothing was written.", err=True)
+        sys.exit(130)
+    sys.exit(status if isinstance(status, int) else 0)
