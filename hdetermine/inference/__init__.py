@@ -1,0 +1,1 @@
+"""From counts to cutoffs, from cutoffs to h."""

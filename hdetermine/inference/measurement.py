@@ -113,7 +113,7 @@ def cutoff_wavelength_pm(
 def planck_J_s(
     model: MeasurementModel, inputs: Any, sine: Callable[[Any], Any] = _numpy_sine
 ) -> Any:
-    """h from one set, or many sets, of input values, J s.
+    """Return h from one set, or many sets, of input values, J s.
 
     Parameters
     ----------

@@ -1,0 +1,1 @@
+"""Constants, laws and tables of the trade."""

@@ -1,0 +1,1 @@
+"""Runs that have not been measured yet."""

@@ -1,0 +1,1 @@
+"""What is measured and known: frozen records without I/O."""

@@ -1,0 +1,1 @@
+"""What people keep: rows, figures, HTML and PDF."""
