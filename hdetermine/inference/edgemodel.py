@@ -1,0 +1,328 @@
+"""Recorded counts around an edge, as a function of the cutoff and its surroundings.
+
+The expected count of a point is
+
+    t rec( B(theta) + int K(theta - theta') C(theta') dtheta' + lines ),
+
+with rec the dead time, B = exp(b0 + b1 s) a sloping background, K the smearing kernel and
+C = exp(a0 + a1 x + a2 x^2) cos(theta') f(x) the continuum above its limit, x = lambda/lambda_min
+- 1 and f the shape of `physics.continuum`. The fit maximises the Poisson likelihood by Fisher
+scoring (Cash 1979). Weak priors keep what the data do not see within reason; they are stated
+beside the numbers below.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hdetermine.inference.scoring import Maximum, maximise
+from hdetermine.inference.smearing import Kernel, quadrature
+from hdetermine.physics.continuum import rising_continuum
+from hdetermine.physics.counting import recorded_rate, recorded_slope
+from hdetermine.records.apparatus import DeadTimeModel
+
+FloatArray = NDArray[np.float64]
+
+# Weak priors (standard deviations): the background changes by less than exp(3) from end to end
+# of the window; the smooth factor by less than exp(3 x), exp(6 x^2); a line stands within
+# 0.02 degrees of where the angle scale puts it. The background amplitude has the prior b^(-1/2)
+# of a Poisson rate, so that a background without counts stays defined.
+_BACKGROUND_SLOPE_U = 1.5
+_SMOOTH_U = (3.0, 6.0)
+_LINE_SHIFT_U_DEG = 0.02
+_JEFFREYS = 0.5
+
+
+@dataclass(frozen=True, slots=True)
+class LineTemplate:
+    """A group of lines inside the window: components as (angle, natural FWHM, strength)."""
+
+    components: tuple[tuple[float, float, float], ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Surroundings:
+    """What the edge fit takes as given.
+
+    Attributes
+    ----------
+    zero_deg : float
+        Reading minus true angle.
+    kernel : Kernel
+        The smearing.
+    excess, excess_energy_keV : float
+        Near-limit excess of the continuum.
+    energy_keV : float
+        Energy at the limit, from the tube voltage.
+    dead_time_us : float
+        Dead time.
+    dead_time_model : str
+        Its model.
+    """
+
+    zero_deg: float
+    kernel: Kernel
+    excess: float
+    excess_energy_keV: float
+    energy_keV: float
+    dead_time_us: float
+    dead_time_model: DeadTimeModel
+
+    def changed(self, **changes: float) -> Surroundings:
+        """Return a copy with other numbers; ``resolution_deg`` and ``triangular_fraction`` go
+        to the kernel."""
+        kernel = replace(
+            self.kernel,
+            fwhm_deg=changes.pop("resolution_deg", self.kernel.fwhm_deg),
+            triangular_fraction=changes.pop(
+                "triangular_fraction", self.kernel.triangular_fraction
+            ),
+        )
+        values = {
+            name: changes.get(name, getattr(self, name))
+            for name in ("zero_deg", "excess", "excess_energy_keV", "energy_keV", "dead_time_us")
+        }
+        return Surroundings(kernel=kernel, dead_time_model=self.dead_time_model, **values)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class EdgeWindow:
+    """The points that take part in a fit, and the terms that describe them.
+
+    Attributes
+    ----------
+    reading_deg, counts, dwell_s : ndarray, shape (n,)
+        The points.
+    continuum_terms, background_terms : int
+        0 to 2 terms of the smooth factor; 1 or 2 of the background.
+    lines : tuple of LineTemplate
+        Lines modelled inside the window.
+    """
+
+    reading_deg: FloatArray
+    counts: FloatArray
+    dwell_s: FloatArray
+    continuum_terms: int
+    background_terms: int
+    lines: tuple[LineTemplate, ...] = ()
+
+    @property
+    def parameters(self) -> int:
+        """Number of parameters of the fit."""
+        return 2 + self.continuum_terms + self.background_terms + 2 * len(self.lines)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class EdgeFit:
+    """A maximum of the likelihood of one window."""
+
+    window: EdgeWindow
+    given: Surroundings
+    maximum: Maximum
+
+    @property
+    def reading_deg(self) -> float:
+        """Cutoff reading, degrees."""
+        return float(self.maximum.parameters[0])
+
+    @property
+    def reading_u_deg(self) -> float:
+        """Standard uncertainty of the reading from counting statistics, degrees."""
+        return float(np.sqrt(max(self.maximum.covariance()[0, 0], 0.0)))
+
+    @property
+    def degrees_of_freedom(self) -> int:
+        """Points minus parameters."""
+        return self.window.counts.size - self.window.parameters
+
+
+def continuum_rate(
+    readings: FloatArray, parameters: FloatArray, terms: int, given: Surroundings
+) -> tuple[FloatArray, FloatArray]:
+    """Smeared continuum (1/s) and its derivatives by cutoff, amplitude and smooth terms.
+
+    Parameters
+    ----------
+    readings : ndarray, shape (n,)
+        Goniometer readings, degrees.
+    parameters : ndarray, shape (2 + terms,)
+        Cutoff reading (degrees), log amplitude, smooth terms.
+    terms : int
+        Number of smooth terms.
+    given : Surroundings
+        The rest.
+
+    Returns
+    -------
+    rate : ndarray, shape (n,)
+    derivatives : ndarray, shape (n, 2 + terms)
+    """
+    limit = float(parameters[0]) - given.zero_deg
+    rate = np.zeros(readings.size)
+    derivatives = np.zeros((readings.size, 2 + terms))
+    angles = readings - given.zero_deg
+    lit = angles + given.kernel.reach_deg > limit
+    if limit <= 0.05 or limit >= 85.0 or not lit.any():
+        return rate, derivatives
+    nodes, weights = quadrature(angles[lit], limit, given.kernel)
+    radians = np.radians(nodes)
+    limit_sine = np.sin(np.radians(limit))
+    x = np.maximum(np.sin(radians) / limit_sine - 1.0, 0.0)
+    value, slope = rising_continuum(x, given.excess, given.energy_keV / given.excess_energy_keV)
+    smooth = parameters[1] + sum(parameters[2 + i] * x ** (i + 1) for i in range(terms))
+    factor = weights * np.cos(radians) * np.exp(np.minimum(smooth, 60.0))
+    value, slope = value * factor, slope * factor
+    slope = slope + value * sum(
+        (i + 1) * parameters[2 + i] * x**i for i in range(terms)
+    )
+    rate[lit] = value.sum(axis=1)
+    x_by_limit = -(1.0 + x) / np.tan(np.radians(limit)) * (np.pi / 180.0)
+    derivatives[lit, 0] = (slope * x_by_limit).sum(axis=1)
+    derivatives[lit, 1] = rate[lit]
+    for i in range(terms):
+        derivatives[lit, 2 + i] = (value * x ** (i + 1)).sum(axis=1)
+    return rate, derivatives
+
+
+def _line_rate(
+    readings: FloatArray, template: LineTemplate, shift: float, given: Surroundings
+) -> FloatArray:
+    angles = readings - given.zero_deg - shift
+    return np.asarray(
+        sum(
+            strength * given.kernel.profile(angles - angle, natural)
+            for angle, natural, strength in template.components
+        )
+    )
+
+
+def background_rate(window: EdgeWindow, parameters: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Background (1/s) and its derivatives by its log terms.
+
+    The slope is in units of the half span of the window.
+    """
+    start = 2 + window.continuum_terms
+    readings = window.reading_deg
+    half = max(0.5 * (readings[-1] - readings[0]), 1e-9)
+    position = (readings - 0.5 * (readings[-1] + readings[0])) / half
+    powers = [position**i for i in range(window.background_terms)]
+    log_rate = sum(parameters[start + i] * power for i, power in enumerate(powers))
+    rate = np.exp(np.clip(log_rate, -60.0, 60.0))
+    return rate, np.stack([rate * power for power in powers], axis=1)
+
+
+def expected_counts(
+    window: EdgeWindow, parameters: FloatArray, given: Surroundings
+) -> tuple[FloatArray, FloatArray]:
+    """Expected recorded counts, shape (n,), and their Jacobian, shape (n, p)."""
+    terms = window.continuum_terms
+    continuum, by_continuum = continuum_rate(window.reading_deg, parameters, terms, given)
+    background, by_background = background_rate(window, parameters)
+    columns = [by_continuum, by_background]
+    rate = continuum + background
+    start = 2 + terms + window.background_terms
+    for i, template in enumerate(window.lines):
+        amplitude = np.exp(min(float(parameters[start + 2 * i]), 60.0))
+        shift = float(parameters[start + 2 * i + 1])
+        step = 1e-3
+        profile = _line_rate(window.reading_deg, template, shift, given)
+        ahead = _line_rate(window.reading_deg, template, shift + step, given)
+        behind = _line_rate(window.reading_deg, template, shift - step, given)
+        rate = rate + amplitude * profile
+        columns.append(
+            amplitude * np.stack([profile, (ahead - behind) / (2.0 * step)], axis=1)
+        )
+    dead_time_s = given.dead_time_us * 1e-6
+    expected = window.dwell_s * recorded_rate(rate, dead_time_s, given.dead_time_model)
+    slope = window.dwell_s * recorded_slope(rate, dead_time_s, given.dead_time_model)
+    jacobian = slope[:, np.newaxis] * np.concatenate(columns, axis=1)
+    return np.maximum(expected, 1e-9), jacobian
+
+
+def _prior(window: EdgeWindow, parameters: FloatArray) -> tuple[float, FloatArray, FloatArray]:
+    """Penalty (as a deviance), its half gradient, and half its curvature (diagonal)."""
+    precision = np.zeros(parameters.size)
+    for i in range(window.continuum_terms):
+        precision[2 + i] = _SMOOTH_U[i] ** -2
+    start = 2 + window.continuum_terms
+    if window.background_terms > 1:
+        precision[start + 1] = _BACKGROUND_SLOPE_U**-2
+    for i in range(len(window.lines)):
+        precision[start + window.background_terms + 2 * i + 1] = _LINE_SHIFT_U_DEG**-2
+    gradient = precision * parameters
+    gradient[start] -= _JEFFREYS
+    penalty = float(np.sum(precision * parameters**2) - 2.0 * _JEFFREYS * parameters[start])
+    return penalty, gradient, precision
+
+
+def fit_edge(
+    window: EdgeWindow, given: Surroundings, start: FloatArray, *, hold: int | None = None
+) -> EdgeFit:
+    """Maximise the Poisson likelihood of a window.
+
+    Parameters
+    ----------
+    window : EdgeWindow
+        Points and terms.
+    given : Surroundings
+        What is taken as known.
+    start : ndarray, shape (p,)
+        Where to start: cutoff reading, log amplitude, smooth terms, log background and its
+        slope, then log amplitude and shift of each line.
+    hold : int, optional
+        Index of a parameter that stays where it starts (for profiles).
+    """
+    limits = np.full(start.size, 3.0)
+    limits[0] = 0.1 * (window.reading_deg[-1] - window.reading_deg[0])
+    maximum = maximise(
+        window.counts,
+        lambda parameters: expected_counts(window, parameters, given),
+        lambda parameters: _prior(window, parameters),
+        start,
+        limits,
+        hold=hold,
+    )
+    return EdgeFit(window, given, maximum)
+
+
+def response_deg(fit: EdgeFit, changed: Surroundings, change: float) -> float:
+    """Shift of the cutoff per unit of an input that the fit took as given.
+
+    By the implicit function theorem on the score: the fit answers to a change of the expected
+    counts as it would to the opposite change of the counts.
+
+    Parameters
+    ----------
+    fit : EdgeFit
+        A converged fit.
+    changed : Surroundings
+        The surroundings with one input moved by `change`.
+    change : float
+        By how much, in the input's unit.
+
+    Returns
+    -------
+    float
+        Degrees per unit of the input.
+    """
+    best = fit.maximum
+    moved, _ = expected_counts(fit.window, best.parameters, changed)
+    by_input = (moved - best.expected) / change
+    pull = best.jacobian.T @ (by_input / best.expected)
+    return float(-np.linalg.solve(best.information, pull)[0])
+
+
+def likelihood_sides(fit: EdgeFit) -> tuple[float, float]:
+    """Distances below and above the cutoff at which the profile deviance rises by one, deg."""
+    u = fit.reading_u_deg
+    sides = []
+    for sign in (-1.0, 1.0):
+        start = fit.maximum.parameters.copy()
+        start[0] += sign * u
+        held = fit_edge(fit.window, fit.given, start, hold=0).maximum
+        rise = held.deviance + held.penalty - fit.maximum.deviance - fit.maximum.penalty
+        sides.append(u / np.sqrt(np.clip(rise, 0.25, 4.0)))
+    return float(sides[0]), float(sides[1])

@@ -1,0 +1,301 @@
+"""Characteristic lines: where each stands on the goniometer, and how wide it is.
+
+Every group of lines that a scan covers (and that its voltage excites) is fitted on its own:
+position, width, form of the kernel, amplitude, and a local sloping background, by the Poisson
+likelihood with the dead time inside. Doublets keep their known separation and ratio.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hdetermine.inference.scoring import Maximum, maximise
+from hdetermine.inference.smearing import Kernel
+from hdetermine.physics.bragg import glancing_angle_deg
+from hdetermine.physics.counting import recorded_rate
+from hdetermine.physics.lines import LineGroup, excited_groups
+from hdetermine.records.apparatus import DeadTimeModel
+from hdetermine.records.scan import Scan
+
+FloatArray = NDArray[np.float64]
+
+ORDERS = (1, 2, 3)
+_WIDTHS_DEG = (0.12, 0.2, 0.35, 0.6)
+_REACH_WIDTHS = 2.2
+_KERNEL_U = 0.29  # of a rectangular distribution between Gaussian and triangle
+
+
+@dataclass(frozen=True, slots=True)
+class Feature:
+    """A group of lines in one order, as it should stand on an ideal goniometer.
+
+    `components` are (true angle in degrees, natural FWHM in degrees, strength), strongest
+    first; `by_spacing` is the change of the angle with the relative spacing, `by_wavelength`
+    with the relative wavelength, degrees.
+    """
+
+    group: LineGroup
+    order: int
+    components: tuple[tuple[float, float, float], ...]
+    by_spacing: float
+    by_wavelength: float
+
+    @property
+    def angle_deg(self) -> float:
+        """True angle of the strongest line, degrees."""
+        return self.components[0][0]
+
+    @property
+    def label(self) -> str:
+        """Name with the order, for instance ``Mo K-L2,3 (n = 2)``."""
+        suffix = "" if self.order == 1 else f" (n = {self.order})"
+        return self.group.label + suffix
+
+
+@dataclass(frozen=True, slots=True)
+class FittedLine:
+    """A feature as found in one scan: shift from the ideal angle, width, kernel form."""
+
+    scan: str
+    feature: Feature
+    shift_deg: float
+    shift_u_deg: float
+    fwhm_deg: float
+    fwhm_u_deg: float
+    triangular_fraction: float
+    triangular_fraction_u: float
+    significance: float
+    misfit: float
+
+
+def features(
+    anode: str, energy_eV: float, spacing_pm: float, refraction: float
+) -> tuple[Feature, ...]:
+    """Every line group of an anode that electrons of this energy excite, by angle.
+
+    Parameters
+    ----------
+    anode : str
+        Chemical symbol.
+    energy_eV : float
+        Energy of the electrons.
+    spacing_pm : float
+        Spacing at the temperature of the run.
+    refraction : float
+        delta/sin^2(theta) in first order.
+    """
+    found = []
+    for group in excited_groups(anode, energy_eV):
+        for order in ORDERS:
+            components = []
+            for line in group.lines:
+                angle = float(glancing_angle_deg(line.wavelength_pm, spacing_pm, refraction, order))
+                tangent = math.tan(math.radians(angle))
+                # dE/E = dlambda/lambda, and the lines lie far above their widths.
+                relative = line.width_eV / (line.excitation_eV * 0.9)
+                components.append((angle, math.degrees(relative * tangent), line.strength))
+            if not all(math.isfinite(angle) and angle < 80.0 for angle, _, _ in components):
+                continue
+            tangent = math.degrees(math.tan(math.radians(components[0][0])))
+            found.append(Feature(group, order, tuple(components), -tangent, tangent))
+    return tuple(sorted(found, key=lambda feature: feature.angle_deg))
+
+
+def covered(
+    scan: Scan, every: tuple[Feature, ...], zero_deg: float, fwhm_deg: float
+) -> tuple[Feature, ...]:
+    """Features whose core lies well inside a scan."""
+    low = scan.reading_deg[0] + fwhm_deg
+    high = scan.reading_deg[-1] - fwhm_deg
+    return tuple(f for f in every if low < f.angle_deg + zero_deg < high)
+
+
+def search_zero(
+    scan: Scan, every: tuple[Feature, ...], zero_deg: float, reach_deg: float
+) -> tuple[float, float] | None:
+    """Zero offset at which the expected pattern of lines fits a scan best.
+
+    A matched filter on the counts above a running background, in units of their noise.
+
+    Returns
+    -------
+    (zero, score) or None
+        Degrees, and the height of the match in standard deviations; None without lines.
+    """
+    if scan.reading_deg.size < 15:
+        return None
+    rate = scan.counts / scan.dwell_s
+    base = _running_background(scan.reading_deg, rate)
+    noise = np.sqrt(np.maximum(base, 0.5 / scan.dwell_s) / scan.dwell_s)
+    step = max(0.25 * scan.step_deg, 0.01)
+    best: tuple[float, float] | None = None
+    for zero in np.arange(zero_deg - reach_deg, zero_deg + reach_deg + 0.5 * step, step):
+        inside = covered(scan, every, float(zero), 0.1)
+        score = 0.0
+        for feature in inside:
+            profile = _feature_profile(scan.reading_deg - zero, feature, Kernel(0.25, 0.5))
+            if not profile.any():
+                continue
+            signal = float(np.sum(profile * (rate - base)) / np.sum(profile**2))
+            error = float(np.sqrt(np.sum((profile * noise) ** 2)) / np.sum(profile**2))
+            score += max(signal / error, 0.0) if error > 0.0 else 0.0
+        if inside and (best is None or score > best[1]):
+            best = (float(zero), score)
+    return best
+
+
+def _running_background(readings: FloatArray, rate: FloatArray) -> FloatArray:
+    """Lower envelope: a running 30 % quantile over 3 degrees."""
+    base = np.empty_like(rate)
+    for i, reading in enumerate(readings):
+        near = np.abs(readings - reading) < 1.5
+        base[i] = np.quantile(rate[near], 0.3)
+    return base
+
+
+def _feature_profile(angles: FloatArray, feature: Feature, kernel: Kernel) -> FloatArray:
+    return np.asarray(
+        sum(
+            strength * kernel.profile(angles - angle, natural)
+            for angle, natural, strength in feature.components
+        )
+    )
+
+
+def _clusters(inside: tuple[Feature, ...], reach_deg: float) -> Iterator[tuple[Feature, ...]]:
+    """Join features whose windows overlap."""
+    cluster: list[Feature] = []
+    for feature in inside:
+        if cluster and feature.angle_deg - cluster[-1].angle_deg > 2.0 * reach_deg:
+            yield tuple(cluster)
+            cluster = []
+        cluster.append(feature)
+    if cluster:
+        yield tuple(cluster)
+
+
+def fit_lines(
+    scan: Scan,
+    every: tuple[Feature, ...],
+    zero_deg: float,
+    dead_time_us: float,
+    dead_time_model: DeadTimeModel,
+) -> tuple[FittedLine, ...]:
+    """Fit the lines that a scan covers.
+
+    Parameters
+    ----------
+    scan : Scan
+        The counts.
+    every : tuple of Feature
+        What the voltage excites.
+    zero_deg : float
+        First guess of the zero offset.
+    dead_time_us, dead_time_model : float, str
+        Of the counter.
+
+    Returns
+    -------
+    tuple of FittedLine
+        Converged fits only; insignificant lines are left to the caller.
+    """
+    results = []
+    for cluster in _clusters(covered(scan, every, zero_deg, 0.15), 0.35):
+        best: tuple[Maximum, float] | None = None
+        for width in _WIDTHS_DEG:
+            fit = _fit_cluster(scan, cluster, zero_deg, width, dead_time_us, dead_time_model)
+            if fit is None or not fit.converged:
+                continue
+            # Windows differ with the starting width: compare deviance per point.
+            quality = fit.deviance / fit.expected.size
+            if best is None or quality < best[1]:
+                best = (fit, quality)
+        if best is None:
+            continue
+        results.extend(_harvest(scan.name, cluster, best[0]))
+    return tuple(results)
+
+
+def _fit_cluster(
+    scan: Scan,
+    cluster: tuple[Feature, ...],
+    zero_deg: float,
+    width_deg: float,
+    dead_time_us: float,
+    dead_time_model: DeadTimeModel,
+) -> Maximum | None:
+    reach = max(_REACH_WIDTHS * width_deg, 4.0 * scan.step_deg)
+    low, high = cluster[0].angle_deg + zero_deg - reach, cluster[-1].angle_deg + zero_deg + reach
+    take = (scan.reading_deg >= low) & (scan.reading_deg <= high)
+    size = 5 + len(cluster)
+    if int(take.sum()) < size + 1:
+        return None
+    readings, dwell = scan.reading_deg[take], scan.dwell_s[take]
+    counts = scan.counts[take].astype(float)
+    half = 0.5 * (readings[-1] - readings[0])
+    position = (readings - readings[0]) / half - 1.0
+    dead_time_s = dead_time_us * 1e-6
+
+    def expected(parameters: FloatArray) -> FloatArray:
+        kernel = Kernel(
+            float(np.exp(np.clip(parameters[1], -4.0, 1.0))),
+            float(np.clip(parameters[2], 0.0, 1.0)),
+        )
+        rate = np.exp(np.clip(parameters[3] + parameters[4] * position, -30.0, 30.0))
+        for i, feature in enumerate(cluster):
+            profile = _feature_profile(readings - parameters[0], feature, kernel)
+            rate = rate + np.exp(np.clip(parameters[5 + i], -30.0, 30.0)) * profile
+        return np.maximum(dwell * recorded_rate(rate, dead_time_s, dead_time_model), 1e-9)
+
+    def model(parameters: FloatArray) -> tuple[FloatArray, FloatArray]:
+        middle = expected(parameters)
+        columns = []
+        for i in range(parameters.size):
+            step = np.zeros(parameters.size)
+            step[i] = 1e-4
+            columns.append((expected(parameters + step) - expected(parameters - step)) / 2e-4)
+        return middle, np.stack(columns, axis=1)
+
+    precision = np.array([0.0, 0.0, _KERNEL_U**-2, 0.0, 1.0 / 9.0] + [0.0] * len(cluster))
+    centre = np.zeros(size)
+    centre[2] = 0.5
+
+    def prior(parameters: FloatArray) -> tuple[float, FloatArray, FloatArray]:
+        gradient = precision * (parameters - centre)
+        return float(np.sum(gradient * (parameters - centre))), gradient, precision
+
+    floor = max(float(np.min(counts / dwell)), 0.2 / float(dwell[0]))
+    height = max(float(np.max(counts / dwell)) - floor, floor)
+    start = np.array(
+        [zero_deg, math.log(width_deg), 0.5, math.log(floor), 0.0]
+        + [math.log(height * width_deg)] * len(cluster)
+    )
+    limits = np.array([0.5 * width_deg, 0.4, 0.3, 1.0, 1.0] + [1.0] * len(cluster))
+    return maximise(counts, model, prior, start, limits)
+
+
+def _harvest(scan: str, cluster: tuple[Feature, ...], fit: Maximum) -> Iterator[FittedLine]:
+    covariance = fit.covariance()
+    u = np.sqrt(np.maximum(np.diag(covariance), 0.0))
+    freedom = max(fit.expected.size - fit.parameters.size, 1)
+    misfit = max(math.sqrt(fit.deviance / freedom), 1.0)
+    width = math.exp(float(fit.parameters[1]))
+    strongest = int(np.argmax(fit.parameters[5:]))
+    feature = cluster[strongest]
+    yield FittedLine(
+        scan=scan,
+        feature=feature,
+        shift_deg=float(fit.parameters[0]),
+        shift_u_deg=float(u[0]) * misfit,
+        fwhm_deg=width,
+        fwhm_u_deg=width * float(u[1]) * misfit,
+        triangular_fraction=float(np.clip(fit.parameters[2], 0.0, 1.0)),
+        triangular_fraction_u=float(u[2]) * misfit,
+        significance=1.0 / max(float(u[5 + strongest]), 1e-6),
+        misfit=misfit,
+    )
