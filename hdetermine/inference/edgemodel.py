@@ -73,7 +73,8 @@ class Surroundings:
 
     def changed(self, **changes: float) -> Surroundings:
         """Return a copy with other numbers; ``resolution_deg`` and ``triangular_fraction`` go
-        to the kernel."""
+        to the kernel.
+        """
         kernel = replace(
             self.kernel,
             fwhm_deg=changes.pop("resolution_deg", self.kernel.fwhm_deg),

@@ -69,6 +69,8 @@ class AngleScale:
     free_spacing_pm, free_spacing_u_pm : float or None
         Spacing when it is fitted together with the zero without its stated value, pm; None
         where the lines do not allow it.
+    zero_by_wavelength_deg : float
+        Change of the zero per relative change of the reference wavelengths, degrees.
     remarks : tuple of str
         Anything a careful reader should know.
     """
@@ -83,6 +85,7 @@ class AngleScale:
     resolution_from: str
     free_spacing_pm: float | None = None
     free_spacing_u_pm: float | None = None
+    zero_by_wavelength_deg: float = 0.0
     remarks: tuple[str, ...] = ()
 
 
@@ -140,7 +143,9 @@ class Cutoff:
     lower_u_deg, upper_u_deg : float
         The two sides of the asymmetric likelihood (distance to a rise of 1 in the deviance).
     window_u_deg : float
-        Spread between the fits of the family, degrees.
+        Spread between the windows of the family, degrees.
+    background_u_deg : float
+        Spread between the backgrounds of the family, degrees.
     glancing_angle_deg : float
         True glancing angle of the cutoff, degrees.
     wavelength_pm : float
@@ -172,6 +177,7 @@ class Cutoff:
     lower_u_deg: float = math.nan
     upper_u_deg: float = math.nan
     window_u_deg: float = math.nan
+    background_u_deg: float = math.nan
     glancing_angle_deg: float = math.nan
     wavelength_pm: float = math.nan
     standard_uncertainty_pm: float = math.nan
