@@ -1,0 +1,114 @@
+"""The budget of h: every input of the measurement equation as a row."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+from uncertainties import unumpy
+
+from hdetermine.budget.propagation import linear_budget
+from hdetermine.inference import measurement
+from hdetermine.records.results import Budget, BudgetRow, MeasurementModel
+
+GROUPS: Mapping[str, str] = {
+    measurement.GAIN: "voltage gain",
+    measurement.OFFSET: "voltage offset",
+    measurement.RIPPLE: "voltage ripple",
+    measurement.WORK_FUNCTION: "cathode work function",
+    measurement.SPACING: "spacing with temperature",
+    measurement.TEMPERATURE: "spacing with temperature",
+    measurement.EXPANSION: "spacing with temperature",
+    measurement.REFRACTION: "refraction",
+    measurement.ZERO: "angle zero after the lines",
+    measurement.RESOLUTION: "resolution and its kernel",
+    measurement.KERNEL: "resolution and its kernel",
+    measurement.DEAD_TIME: "dead time",
+    measurement.EXCESS: "continuum shape near the limit",
+    measurement.EXCESS_ENERGY: "continuum shape near the limit",
+    measurement.WAVELENGTH_SCALE: "reference wavelengths",
+}
+SCAN_GROUPS: Mapping[str, str] = {
+    "counting_deg": "counting statistics",
+    "window_deg": "spread between fit windows",
+    "background_deg": "background shape",
+    "voltage_kV": "voltage repeatability",
+}
+
+
+def group_of(name: str) -> str:
+    """Group of an input of h, in words; the name itself for an input of another kind."""
+    if name.startswith("scan."):
+        return SCAN_GROUPS.get(name.rpartition(".")[2], name)
+    return GROUPS.get(name, name)
+
+
+def planck_budget(
+    model: MeasurementModel, coverage_probability: float = 0.95, *, second_order: bool = False
+) -> Budget:
+    """Linear budget of h with the model's weights.
+
+    Parameters
+    ----------
+    model : MeasurementModel
+        With n scans and m inputs.
+    coverage_probability : float
+        Of the expanded uncertainty.
+    second_order : bool
+        Add the next terms of the Taylor series (slow: of the order of m^2 evaluations).
+
+    Returns
+    -------
+    Budget
+        In J s, one row an input, grouped.
+    """
+
+    def planck(values: Any) -> Any:
+        return measurement.planck_J_s(model, values, unumpy.sin)
+
+    return linear_budget(
+        planck,
+        model.inputs,
+        model.correlation,
+        measurand="h",
+        unit="J s",
+        coverage_probability=coverage_probability,
+        second_order=second_order,
+        group_of=group_of,
+    )
+
+
+def group_shares(budget: Budget) -> dict[str, float]:
+    """Share of the variance of each group of rows, largest first."""
+    shares: dict[str, float] = {}
+    for row in budget.rows:
+        key = row.group or row.quantity
+        shares[key] = shares.get(key, 0.0) + row.variance_share
+    return dict(sorted(shares.items(), key=lambda item: -item[1]))
+
+
+def common_share(budget: Budget) -> float:
+    """Share of the variance that does not shrink with more voltages."""
+    return sum(row.variance_share for row in budget.rows if row.common)
+
+
+def limiting_sentence(budget: Budget) -> str:
+    """Say in one sentence what limits the result, and what more voltages could do."""
+    shares = group_shares(budget)
+    if not budget.combined_standard_uncertainty > 0.0:
+        return "No input has an uncertainty, so nothing limits the result."
+    leading = [
+        f"{group} ({share:.0%})" for group, share in list(shares.items())[:3] if share > 0.05
+    ]
+    common = common_share(budget)
+    return (
+        f"{budget.measurand} is limited by {', '.join(leading)}; {common:.0%} of the variance is "
+        "common to all voltages and does not shrink with more of them."
+    )
+
+
+def scan_family(row: BudgetRow) -> str:
+    """Name that the same input of every scan shares, ``scan.*.counting_deg``; else its own."""
+    if row.quantity.startswith("scan."):
+        return f"scan.*.{row.quantity.rpartition('.')[2]}"
+    return row.quantity
