@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 from hdetermine.inference.scoring import Maximum, maximise
 from hdetermine.inference.smearing import Kernel
 from hdetermine.physics.bragg import glancing_angle_deg
-from hdetermine.physics.counting import recorded_rate
+from hdetermine.physics.counting import recorded_rate, recorded_slope
 from hdetermine.physics.lines import LineGroup, excited_groups
 from hdetermine.records.apparatus import DeadTimeModel
 from hdetermine.records.scan import Scan
@@ -25,7 +25,6 @@ from hdetermine.records.scan import Scan
 FloatArray = NDArray[np.float64]
 
 ORDERS = (1, 2, 3)
-_WIDTHS_DEG = (0.12, 0.2, 0.35, 0.6)
 _REACH_WIDTHS = 2.2
 _KERNEL_U = 0.29  # of a rectangular distribution between Gaussian and triangle
 
@@ -204,21 +203,33 @@ def fit_lines(
     tuple of FittedLine
         Converged fits only; insignificant lines are left to the caller.
     """
-    results = []
+    results: list[FittedLine] = []
     for cluster in _clusters(covered(scan, every, zero_deg, 0.15), 0.35):
-        best: tuple[Maximum, float] | None = None
-        for width in _WIDTHS_DEG:
+        width = _width_guess(scan, cluster, zero_deg)
+        fit = None
+        for _ in range(3):
             fit = _fit_cluster(scan, cluster, zero_deg, width, dead_time_us, dead_time_model)
-            if fit is None or not fit.converged:
-                continue
-            # Windows differ with the starting width: compare deviance per point.
-            quality = fit.deviance / fit.expected.size
-            if best is None or quality < best[1]:
-                best = (fit, quality)
-        if best is None:
-            continue
-        results.extend(_harvest(scan.name, cluster, best[0]))
+            if fit is None:
+                break
+            fitted = math.exp(float(np.clip(fit.parameters[1], -4.0, 1.0)))
+            if abs(fitted / width - 1.0) < 0.15:
+                break
+            width = min(max(fitted, 0.5 * width), 2.0 * width)
+        if fit is not None and fit.converged:
+            results.extend(_harvest(scan.name, cluster, fit))
     return tuple(results)
+
+
+def _width_guess(scan: Scan, cluster: tuple[Feature, ...], zero_deg: float) -> float:
+    """Area over height of the strongest peak of a cluster, degrees."""
+    centre = np.array([feature.angle_deg for feature in cluster]) + zero_deg
+    near = np.abs(scan.reading_deg[:, np.newaxis] - centre) < 0.7
+    rate = (scan.counts / scan.dwell_s)[near.any(axis=1)]
+    if rate.size < 3:
+        return 0.25
+    above = rate - np.quantile(rate, 0.2)
+    width = float(above.clip(min=0.0).sum()) * scan.step_deg / max(float(above.max()), 1e-9)
+    return float(np.clip(width / len(cluster), 1.2 * scan.step_deg, 0.8))
 
 
 def _fit_cluster(
@@ -241,25 +252,27 @@ def _fit_cluster(
     position = (readings - readings[0]) / half - 1.0
     dead_time_s = dead_time_us * 1e-6
 
-    def expected(parameters: FloatArray) -> FloatArray:
+    def profiles(place: FloatArray) -> FloatArray:
         kernel = Kernel(
-            float(np.exp(np.clip(parameters[1], -4.0, 1.0))),
-            float(np.clip(parameters[2], 0.0, 1.0)),
+            math.exp(min(max(float(place[1]), -4.0), 1.0)), min(max(float(place[2]), 0.0), 1.0)
         )
-        rate = np.exp(np.clip(parameters[3] + parameters[4] * position, -30.0, 30.0))
-        for i, feature in enumerate(cluster):
-            profile = _feature_profile(readings - parameters[0], feature, kernel)
-            rate = rate + np.exp(np.clip(parameters[5 + i], -30.0, 30.0)) * profile
-        return np.maximum(dwell * recorded_rate(rate, dead_time_s, dead_time_model), 1e-9)
+        return np.stack([_feature_profile(readings - place[0], f, kernel) for f in cluster])
 
     def model(parameters: FloatArray) -> tuple[FloatArray, FloatArray]:
-        middle = expected(parameters)
+        base = np.exp(np.clip(parameters[3] + parameters[4] * position, -30.0, 30.0))
+        strength = np.exp(np.clip(parameters[5:], -30.0, 30.0))
+        shapes = profiles(parameters[:3])
+        rate = base + strength @ shapes
         columns = []
-        for i in range(parameters.size):
-            step = np.zeros(parameters.size)
+        for i in range(3):
+            step = np.zeros(3)
             step[i] = 1e-4
-            columns.append((expected(parameters + step) - expected(parameters - step)) / 2e-4)
-        return middle, np.stack(columns, axis=1)
+            ahead, behind = profiles(parameters[:3] + step), profiles(parameters[:3] - step)
+            columns.append(strength @ (ahead - behind) / 2e-4)
+        columns += [base, base * position, *(strength[:, np.newaxis] * shapes)]
+        slope = dwell * recorded_slope(rate, dead_time_s, dead_time_model)
+        expected = dwell * recorded_rate(rate, dead_time_s, dead_time_model)
+        return np.maximum(expected, 1e-9), slope[:, np.newaxis] * np.stack(columns, axis=1)
 
     precision = np.array([0.0, 0.0, _KERNEL_U**-2, 0.0, 1.0 / 9.0] + [0.0] * len(cluster))
     centre = np.zeros(size)

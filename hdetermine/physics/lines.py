@@ -5,6 +5,8 @@ Lindroth and Anton, Rev. Mod. Phys. 75, 35 (2003)), directly measured values, co
 hc/e of the 2019 SI; Cr, Fe, Co and Cu K-M2,3 are one unresolved value. Natural widths: sums of
 the level widths of Campbell and Papp, At. Data Nucl. Data Tables 77, 1 (2001), as carried by
 xraylib 4.3.0. Excitation thresholds and absorption edges: xraydb 4.5.8, good to 0.02 %.
+The weak K-N2,3
+line beside K-M2,3 of Mo, Rh and Ag is taken, with its strength, from xraydb 4.5.8 (2e-4).
 Strengths within a group: 0.52 for K-L2 against K-L3 and for K-M2 against K-M3, 0.11 for L3-M4
 against L3-M5 (common practice, no source).
 """
@@ -69,14 +71,17 @@ LINES: tuple[Line, ...] = (
     Line("Mo", "K-L2", "K-L2,3", 71.360728, 0.001191, 20000.0, 6.35, 0.52),
     Line("Mo", "K-M3", "K-M2,3", 63.230339, 0.001354, 20000.0, 6.62, 1.0),
     Line("Mo", "K-M2", "K-M2,3", 63.288727, 0.001325, 20000.0, 6.62, 0.52),
+    Line("Mo", "K-N2,3", "K-M2,3", 62.108864, 0.012422, 20000.0, 10.0, 0.252),
     Line("Rh", "K-L3", "K-L2,3", 61.329374, 0.000607, 23220.0, 7.73, 1.0),
     Line("Rh", "K-L2", "K-L2,3", 61.764589, 0.000615, 23220.0, 7.90, 0.52),
     Line("Rh", "K-M3", "K-M2,3", 54.561889, 0.000408, 23220.0, 8.02, 1.0),
     Line("Rh", "K-M2", "K-M2,3", 54.621405, 0.000409, 23220.0, 8.02, 0.52),
+    Line("Rh", "K-N2,3", "K-M2,3", 53.511814, 0.010702, 23220.0, 10.0, 0.279),
     Line("Ag", "K-L3", "K-L2,3", 55.942184, 0.000076, 25514.0, 8.91, 1.0),
     Line("Ag", "K-L2", "K-L2,3", 56.381313, 0.000256, 25514.0, 9.08, 0.52),
     Line("Ag", "K-M3", "K-M2,3", 49.708167, 0.000598, 25514.0, 9.31, 1.0),
     Line("Ag", "K-M2", "K-M2,3", 49.769785, 0.000599, 25514.0, 9.21, 0.52),
+    Line("Ag", "K-N2,3", "K-M2,3", 48.716203, 0.009743, 25514.0, 10.0, 0.298),
     Line("W", "K-L3", "K-L2,3", 20.901316, 0.000018, 69525.0, 44.91, 1.0),
     Line("W", "K-L2", "K-L2,3", 21.383307, 0.000052, 69525.0, 44.92, 0.52),
     Line("W", "K-M3", "K-M2,3", 18.437683, 0.000302, 69525.0, 46.50, 1.0),
