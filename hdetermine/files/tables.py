@@ -1,0 +1,236 @@
+"""Scan tables, text or spreadsheet, as columns with their headers."""
+
+from __future__ import annotations
+
+import datetime
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+
+from hdetermine.errors import InputError
+from hdetermine.files.headers import meaning_of
+from hdetermine.files.limits import MAX_CELLS, check_limit
+from hdetermine.files.numerals import looks_numeric, tidy
+from hdetermine.files.plaintext import plain_text, quoted
+from hdetermine.files.texttable import TextLines, comment_cells, decode, split_lines
+
+Cell = str | float | bool | datetime.date | datetime.time | datetime.timedelta | None
+
+
+@dataclass(frozen=True, slots=True)
+class Column:
+    """One column of a table.
+
+    Attributes
+    ----------
+    number : int
+        Counted from 1.
+    parts : tuple of str
+        Its header lines, top to bottom, without empty ones.
+    cells : tuple
+        Its cells below the header; None where blank.
+    """
+
+    number: int
+    parts: tuple[str, ...]
+    cells: tuple[Cell, ...]
+
+    @property
+    def header(self) -> str:
+        """Header lines, joined."""
+        return " ".join(self.parts)
+
+
+@dataclass(frozen=True, slots=True)
+class Table:
+    """A scan table.
+
+    Attributes
+    ----------
+    where : str
+        File (and sheet), for messages.
+    columns : tuple of Column
+        Those that hold anything.
+    lines : tuple of int
+        Line or row number of each row.
+    spreadsheet : bool
+        True if cells have addresses such as B7.
+    titles : tuple of str
+        Lines that are neither header nor data, in order.
+    """
+
+    where: str
+    columns: tuple[Column, ...]
+    lines: tuple[int, ...]
+    spreadsheet: bool = False
+    titles: tuple[str, ...] = field(default=())
+
+    def place(self, row: int, column: Column) -> str:
+        """Name a cell for a message."""
+        return _place(self.where, self.lines[row], column.number, self.spreadsheet)
+
+    def listing(self) -> str:
+        """Name the columns for a message."""
+        shown = [quoted(c.header or f"column {c.number}", 30) for c in self.columns[:12]]
+        return ", ".join(shown) + (", …" if len(self.columns) > 12 else "")
+
+
+def read_table(data: bytes, where: str, sheet: str | None = None) -> Table:
+    """Read a scan table of any supported kind.
+
+    Parameters
+    ----------
+    data : bytes
+        Content of the file.
+    where : str
+        Its name, for messages.
+    sheet : str or None
+        Name of the sheet of a spreadsheet; None takes the only one that holds data.
+
+    Returns
+    -------
+    Table
+
+    Raises
+    ------
+    InputError
+        In one sentence that names the file, the place and the remedy.
+    """
+    if data.startswith(b"PK\x03\x04"):
+        from hdetermine.files.spreadsheet import read_grid
+
+        name, rows = read_grid(data, where, sheet)
+        return _from_grid(rows, f"{where}, sheet {quoted(name)}")
+    if sheet is not None:
+        raise InputError(
+            f"{where}: sheet {quoted(sheet)} is asked for, but this is a text file; leave sheet "
+            "out of the run sheet."
+        )
+    return _from_text(split_lines(decode(data, where), where), where)
+
+
+def _from_text(lines: TextLines, where: str) -> Table:
+    rows: list[list[Cell]] = [[cell or None for cell in row] for row in lines.rows]
+    start = _first_data_row(rows)
+    if start is None:
+        raise InputError(
+            f"{where}: there are no rows of numbers below its header; put the counts into it."
+        )
+    titles: list[str] = []
+    for number, line in lines.other:
+        comment = line.lstrip().startswith(("#", "%", "!", "//"))
+        if number > lines.numbers[start] and not comment:
+            raise InputError(
+                f"{where}, line {number}: {quoted(line, 40)} is not a row like the others; correct "
+                "it, or start it with # to make it a comment."
+            )
+        if number < lines.numbers[start]:
+            titles.append(line)
+    header = rows[:start]
+    width = max(len(row) for row in rows[start : start + 1])
+    if not header:
+        for line in reversed(titles):
+            cells = comment_cells(line, width)
+            if cells and not all(looks_numeric(cell) for cell in cells if cell):
+                header = [[cell or None for cell in cells]]
+                break
+    shown = tuple(plain_text(line) for line in titles)
+    return _assemble(
+        rows[start:], header, lines.numbers[start:], lines.numbers, where, False, shown
+    )
+
+
+def _from_grid(rows: Sequence[Sequence[Cell]], where: str) -> Table:
+    filled: list[list[Cell]] = []
+    numbers: list[int] = []
+    for number, row in enumerate(rows, start=1):
+        cells: list[Cell] = [
+            (cell.strip() or None) if isinstance(cell, str) else cell for cell in row
+        ]
+        if any(cell is not None for cell in cells):
+            filled.append(cells)
+            numbers.append(number)
+    start = _first_data_row(filled)
+    if start is None:
+        raise InputError(
+            f"{where}: there are no rows of numbers below its header; put the counts into it."
+        )
+    header = filled[:start]
+    titles = tuple(
+        plain_text(" ".join(str(cell) for cell in row if cell is not None)) for row in header
+    )
+    return _assemble(filled[start:], header, numbers[start:], numbers, where, True, titles)
+
+
+def _assemble(
+    rows: list[list[Cell]],
+    header: list[list[Cell]],
+    lines: list[int],
+    all_lines: list[int],
+    where: str,
+    spreadsheet: bool,
+    titles: tuple[str, ...],
+) -> Table:
+    width = len(rows[0])
+    for row, number in zip(rows, lines, strict=True):
+        if len(row) != width:
+            raise InputError(
+                f"{where}, line {number}: it has {len(row)} columns where the first row of "
+                f"numbers has {width}; make the rows equally long."
+            )
+    check_limit(width * len(rows), MAX_CELLS, where, "cells")
+    header = [row for row in header if len(row) == width]
+    for row, number in zip(header, all_lines, strict=False):
+        _check_header(row, number, where, spreadsheet)
+    columns = []
+    for index in range(width):
+        cells = tuple(row[index] for row in rows)
+        parts = tuple(plain_text(_as_text(row[index])) for row in header if row[index] is not None)
+        if any(cell is not None for cell in cells):
+            columns.append(Column(index + 1, parts, cells))
+    return Table(where, tuple(columns), tuple(lines), spreadsheet, titles)
+
+
+def _check_header(row: list[Cell], number: int, where: str, spreadsheet: bool) -> None:
+    """Refuse a broken row of numbers that would pass for a header."""
+    first = next(cell for cell in row if cell is not None)
+    numbers = [cell for cell in row if _is_number(cell)]
+    others = [i for i, cell in enumerate(row) if cell is not None and not _is_number(cell)]
+    starts_as_number = (
+        isinstance(first, str)
+        and tidy(first)[:1] in "0123456789.,+-"
+        and meaning_of(first).role == "other"
+    )
+    if numbers and (_is_number(first) or starts_as_number):
+        place = _place(where, number, others[0] + 1, spreadsheet)
+        raise InputError(f"{place}: {quoted(row[others[0]], 40)} is not a number; correct it.")
+
+
+def _as_text(cell: Cell) -> str:
+    if isinstance(cell, float) and cell.is_integer():
+        return f"{cell:.0f}"
+    return str(cell)
+
+
+def _is_number(cell: Cell) -> bool:
+    if isinstance(cell, str):
+        return looks_numeric(cell)
+    return isinstance(cell, float | int) and not isinstance(cell, bool)
+
+
+def _first_data_row(rows: list[list[Cell]]) -> int | None:
+    """Index of the first row with two numbers or more and nothing else."""
+    for index, row in enumerate(rows):
+        filled = [cell for cell in row if cell is not None]
+        if len(filled) > 1 and all(_is_number(cell) for cell in filled):
+            return index
+    return None
+
+
+def _place(where: str, line: int, column: int, spreadsheet: bool) -> str:
+    if not spreadsheet:
+        return f"{where}, line {line}, column {column}"
+    letters = ""
+    while column:
+        column, rest = divmod(column - 1, 26)
+        letters = chr(ord("A") + rest) + letters
+    return f"{where}, cell {letters}{line}"

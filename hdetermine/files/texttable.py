@@ -1,0 +1,227 @@
+"""Text tables: encoding, separator, and lines split into cells."""
+
+from __future__ import annotations
+
+import codecs
+import csv
+import re
+import unicodedata
+from dataclasses import dataclass
+
+from hdetermine.errors import InputError
+from hdetermine.files.limits import MAX_COLUMNS, MAX_LINE_CHARACTERS, MAX_ROWS, check_limit
+from hdetermine.files.numerals import looks_numeric
+
+_COMMENTS = ("#", "%", "!", "//")
+_BLANKS = re.compile(r"[ \t\u00a0]+")
+_WIDE_BLANKS = re.compile(r"\t+| {2,}")
+_NUMBER_LINE = re.compile(r"[0-9.,;|'\"eE+\-\u2212°\s\u00a0\u202f\u2009]*$")
+_SAMPLE = 65_536
+_FAMILIES = {
+    b"\x89PNG": "a picture",
+    b"\xff\xd8\xff": "a picture",
+    b"GIF8": "a picture",
+    b"BM": "a picture",
+    b"II*\0": "a picture",
+    b"MM\0*": "a picture",
+    b"%PDF": "a PDF document",
+    b"\xd0\xcf\x11\xe0": "a spreadsheet or document of an old kind",
+    b"\x1f\x8b": "a compressed file",
+    b"7z\xbc\xaf": "a compressed file",
+    b"Rar!": "a compressed file",
+    b"\x7fELF": "a program",
+    b"MZ\x90": "a program",
+    b"{\\rtf": "a word-processor document",
+    b"<!DOCTYPE": "a web page",
+    b"<html": "a web page",
+    b"<?xml": "an XML document",
+    b"<svg": "a picture",
+}
+
+
+@dataclass(frozen=True, slots=True)
+class TextLines:
+    """A text file as cells.
+
+    Attributes
+    ----------
+    rows : list of list of str
+        Cells of every line that has as many as the data.
+    numbers : list of int
+        Line number of each row.
+    other : list of (int, str)
+        Lines that are not rows: titles and comments, with their numbers.
+    """
+
+    rows: list[list[str]]
+    numbers: list[int]
+    other: list[tuple[int, str]]
+
+
+def family_of(data: bytes) -> str:
+    """Say what kind of file this is if it is certainly no table; empty otherwise."""
+    for start, family in _FAMILIES.items():
+        if data.lstrip(b"\xef\xbb\xbf \r\n\t").lower().startswith(start.lower()):
+            return "" if family == "a picture" and start == b"BM" and b"\0" not in data else family
+    return ""
+
+
+def decode(data: bytes, where: str) -> str:
+    """Turn bytes into text: UTF-8, UTF-16, or the western code pages.
+
+    Raises
+    ------
+    InputError
+        If this is no text.
+    """
+    family = family_of(data)
+    if family:
+        raise InputError(
+            f"{where}: this is {family} and not a table; export the counts as CSV or xlsx."
+        )
+    text = _decoded(data)
+    strange = sum(unicodedata.category(c) == "Cc" and c not in "\t\n\r\f\v\x1a" for c in text)
+    if text is None or strange > 0.01 * len(text):
+        raise InputError(
+            f"{where}: this is neither text nor a spreadsheet; export the counts as CSV or xlsx."
+        )
+    return text.replace("\x1a", "")
+
+
+def _decoded(data: bytes) -> str:
+    for mark, encoding in (
+        (codecs.BOM_UTF8, "utf-8-sig"),
+        (codecs.BOM_UTF16_LE, "utf-16"),
+        (codecs.BOM_UTF16_BE, "utf-16"),
+    ):
+        if data.startswith(mark):
+            return data.decode(encoding, errors="replace")
+    head = data[:2000]
+    for encoding, zeros in (("utf-16-le", head[1::2]), ("utf-16-be", head[::2])):
+        if zeros and zeros.count(0) > 0.9 * len(zeros):
+            return data.decode(encoding, errors="replace")
+    try:
+        return data.decode("utf-8")
+    except UnicodeDecodeError:
+        return data.decode(_code_page(data), errors="replace")
+
+
+def _code_page(data: bytes) -> str:
+    from charset_normalizer import from_bytes
+
+    lines = [line for line in data.splitlines() if not line.isascii()]
+    guess = from_bytes(
+        b"\n".join(lines)[:_SAMPLE],
+        cp_isolation=["cp1252", "latin_1", "mac_roman", "cp850"],
+    ).best()
+    return guess.encoding if guess else "cp1252"
+
+
+def split_lines(text: str, where: str) -> TextLines:
+    """Split a text into cells by the separator that its numbers betray.
+
+    Raises
+    ------
+    InputError
+        If there are no lines of numbers, or no separator splits them alike.
+    """
+    lines = _logical_lines(text, where)
+    candidates = [
+        (number, line)
+        for number, line in lines
+        if _NUMBER_LINE.match(line) and any(c in "0123456789" for c in line)
+    ]
+    if not candidates:
+        raise InputError(f"{where}: {_no_numbers(text)}")
+    separator = _separator([line for _, line in candidates])
+    if separator is None:
+        raise InputError(
+            f"{where}: no separator (tab, semicolon, comma or blanks) splits its lines into "
+            "columns of numbers; export it with semicolons or tabs between the columns."
+        )
+    counts: dict[int, int] = {}
+    for _, line in candidates:
+        width = len(_cells(line, separator))
+        counts[width] = counts.get(width, 0) + 1
+    width = max(counts, key=lambda w: (counts[w], w))
+    check_limit(width, MAX_COLUMNS, where, "columns")
+    check_limit(len(lines), MAX_ROWS, where, "lines")
+    result = TextLines([], [], [])
+    for number, line in lines:
+        is_comment = line.lstrip().startswith(_COMMENTS)
+        cells = _cells(line, separator)
+        if len(cells) != width and separator == " ":
+            cells = [cell for cell in _WIDE_BLANKS.split(line.strip()) if cell]
+        if is_comment or (len(cells) != width and not _holds_numbers(cells)):
+            result.other.append((number, line))
+        else:
+            result.rows.append(cells)
+            result.numbers.append(number)
+    return result
+
+
+def comment_cells(line: str, width: int) -> list[str] | None:
+    """Split a comment or title line into `width` cells, if any separator does."""
+    line = line.strip()
+    for mark in _COMMENTS:
+        line = line.lstrip(mark[0]).strip() if line.startswith(mark) else line
+    for separator in ("\t", ";", "|", ",", "  ", " "):
+        if separator == "  ":
+            cells = [cell for cell in _WIDE_BLANKS.split(line) if cell]
+        else:
+            cells = _cells(line, separator)
+        if len(cells) == width:
+            return cells
+    return None
+
+
+def _holds_numbers(cells: list[str]) -> bool:
+    """Whether a line of another width still has to be taken for a row: it starts as one."""
+    filled = [cell for cell in cells if cell]
+    return bool(filled) and all(looks_numeric(cell) for cell in filled)
+
+
+def _logical_lines(text: str, where: str) -> list[tuple[int, str]]:
+    """Lines that are not blank, with their numbers; quoted cells may run over line ends."""
+    lines: list[tuple[int, str]] = []
+    for number, line in enumerate(re.split(r"\r\n|\n|\r", text), start=1):
+        if len(line) > MAX_LINE_CHARACTERS:
+            raise InputError(
+                f"{where}, line {number}: it has {len(line)} characters, more than the "
+                f"{MAX_LINE_CHARACTERS} that are read; is this a table?"
+            )
+        if line.strip(" \t\f\v\u00a0\ufeff\0"):
+            lines.append((number, line.strip("\f\v\ufeff\0")))
+    return lines
+
+
+def _no_numbers(text: str) -> str:
+    if any(unicodedata.category(c) == "Nd" and not c.isascii() for c in text):
+        return "its numbers are written in digits of another script; write them with 0 to 9."
+    return "there are no rows of numbers below its header; put the counts into it."
+
+
+def _separator(lines: list[str]) -> str | None:
+    for separator in ("\t", ";", "|", ",", " "):
+        good = 0
+        widths: dict[int, int] = {}
+        for line in lines:
+            cells = _cells(line, separator)
+            filled = [cell for cell in cells if cell]
+            if len(cells) > 1 and filled and all(looks_numeric(cell) for cell in filled):
+                good += 1
+                widths[len(cells)] = widths.get(len(cells), 0) + 1
+        if good >= 0.8 * len(lines) and max(widths.values(), default=0) >= 0.5 * len(lines):
+            return separator
+    return None
+
+
+def _cells(line: str, separator: str) -> list[str]:
+    """Split one line; quotation marks protect a separator."""
+    if separator == " ":
+        return [cell.strip('"') for cell in _BLANKS.split(line.strip()) if cell]
+    if '"' in line:
+        cells = next(csv.reader([line], delimiter=separator, skipinitialspace=True), [])
+    else:
+        cells = line.split(separator)
+    return [cell.strip() for cell in cells]
