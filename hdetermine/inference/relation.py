@@ -1,0 +1,357 @@
+"""The inverse relation between cutoff wavelength and voltage.
+
+Each cutoff gives its own h; their mean is taken with the weights that the full covariance of
+cutoffs and voltages asks for (`weights`). The same data are then asked whether a line with an
+intercept, or another exponent than one, would serve better, whether they scatter more than
+their inputs allow (Birge, Phys. Rev. 40, 207, 1932), and what each voltage does to the result.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import replace
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.stats import chi2 as chi2_distribution
+
+from hdetermine.inference import measurement as names
+from hdetermine.inference.line import fit_straight_line
+from hdetermine.inference.weights import (
+    gls_weights,
+    input_covariance,
+    log_sensitivities,
+    single_planck_J_s,
+    with_gls_weights,
+)
+from hdetermine.physics.constants import PLANCK_PER_SLOPE
+from hdetermine.records.apparatus import Apparatus
+from hdetermine.records.quantity import Quantity
+from hdetermine.records.results import (
+    AngleScale,
+    Cutoff,
+    Influence,
+    MeasurementModel,
+    Relation,
+)
+
+FloatArray = NDArray[np.float64]
+
+SCATTER_CHANCE = 0.01  # scatter beyond the inputs is added below this chance of its chi-square
+REPEAT_CHANCE = 0.05
+VOLTAGE_INPUTS = (names.GAIN, names.OFFSET, names.RIPPLE, names.WORK_FUNCTION)
+
+
+def build_model(
+    apparatus: Apparatus, scale: AngleScale, cutoffs: tuple[Cutoff, ...]
+) -> MeasurementModel:
+    """Gather the used cutoffs and every input into the measurement model.
+
+    Parameters
+    ----------
+    apparatus : Apparatus
+        For the inputs that neither lines nor edges changed.
+    scale : AngleScale
+        Zero, spacing and resolution as they stand after the lines.
+    cutoffs : tuple of Cutoff
+        Refused ones are passed over.
+
+    Returns
+    -------
+    MeasurementModel
+        With its weights.
+    """
+    used = tuple(cutoff for cutoff in cutoffs if cutoff.used)
+    tube = apparatus.tube
+    common = [
+        tube.gain,
+        tube.offset_kV,
+        tube.ripple,
+        tube.cathode_work_function_eV,
+        *scale.inputs,
+        apparatus.crystal.refraction,
+        scale.resolution,
+        scale.kernel,
+        apparatus.counter.dead_time_us,
+        apparatus.continuum.near_limit_excess,
+        apparatus.continuum.near_limit_energy_keV,
+    ]
+    own: list[Quantity] = []
+    for cutoff in used:
+        own += _own_inputs(cutoff, tube.repeatability_kV)
+    inputs = tuple(common + own)
+    index = {quantity.name: i for i, quantity in enumerate(inputs)}
+    correlation = np.eye(len(inputs))
+    joint = [index[quantity.name] for quantity in scale.inputs]
+    correlation[np.ix_(joint, joint)] = scale.correlation
+    responses = np.zeros((len(used), len(inputs)))
+    for row, cutoff in enumerate(used):
+        for name, response in cutoff.responses_deg.items():
+            responses[row, index[name]] = response
+        if names.WAVELENGTH_SCALE in index:
+            # The zero follows the wavelengths; the true angle is the reading less the zero.
+            responses[row, index[names.WAVELENGTH_SCALE]] = -scale.zero_by_wavelength_deg
+        for own_name in (names.counting_name, names.window_name, names.background_name):
+            responses[row, index[own_name(cutoff.scan)]] = 1.0
+    model = MeasurementModel(
+        scans=tuple(cutoff.scan for cutoff in used),
+        displayed_kV=np.array([cutoff.tube_voltage_kV for cutoff in used]),
+        reading_deg=np.array([cutoff.reading_deg for cutoff in used]),
+        inputs=inputs,
+        correlation=correlation,
+        responses_deg=responses,
+        weights=np.full(len(used), 1.0 / len(used)),
+        skew=np.array([[cutoff.lower_u_deg, cutoff.upper_u_deg] for cutoff in used]),
+        reference_temperature_C=apparatus.crystal.reference_temperature_C,
+    )
+    return with_gls_weights(model)
+
+
+def _own_inputs(cutoff: Cutoff, repeatability: Quantity) -> list[Quantity]:
+    def angle(name: str, symbol: str, u: float) -> Quantity:
+        return Quantity(name, symbol, 0.0, u, "°", evaluation="A", common=False)
+
+    return [
+        angle(names.counting_name(cutoff.scan), "δθ_c", cutoff.counting_u_deg),
+        angle(names.window_name(cutoff.scan), "δθ_w", cutoff.window_u_deg),
+        angle(names.background_name(cutoff.scan), "δθ_b", cutoff.background_u_deg),
+        replace(repeatability, name=names.voltage_name(cutoff.scan), symbol="δU", common=False),
+    ]
+
+
+def learn_repeatability(model: MeasurementModel) -> tuple[MeasurementModel, float | None]:
+    """Take the repeatability of the voltage from repeated scans where they show more of it.
+
+    Returns
+    -------
+    model : MeasurementModel
+        With the repeatability raised, if the repeats scatter more than the inputs allow with a
+        chance below 5 %.
+    relative : float or None
+        Scatter between repeats, relative; None without repeats.
+    """
+    log_h = np.log(single_planck_J_s(model))
+    sensitivities = log_sensitivities(model, model.reading_deg)
+    independent = np.array([not quantity.common for quantity in model.inputs])
+    variance = (sensitivities[:, independent] ** 2) @ (
+        np.array([quantity.standard_uncertainty for quantity in model.inputs])[independent] ** 2
+    )
+    squares, freedom, chi2 = 0.0, 0, 0.0
+    for voltage in dict.fromkeys(model.displayed_kV.tolist()):
+        group = np.flatnonzero(model.displayed_kV == voltage)
+        if group.size > 1:
+            deviation = log_h[group] - log_h[group].mean()
+            squares += float(np.sum(deviation**2))
+            chi2 += float(np.sum(deviation**2 / variance[group]))
+            freedom += group.size - 1
+    if freedom == 0:
+        return model, None
+    relative = math.sqrt(squares / freedom)
+    if chi2_distribution.sf(chi2, freedom) >= REPEAT_CHANCE:
+        return model, relative
+    missing = max(relative**2 - float(np.mean(variance)), 0.0)
+    voltages = {names.voltage_name(scan): kV for scan, kV in
+                zip(model.scans, model.displayed_kV.tolist(), strict=True)}
+    inputs = tuple(
+        replace(
+            quantity,
+            standard_uncertainty=math.hypot(
+                quantity.standard_uncertainty, math.sqrt(missing) * voltages[quantity.name]
+            ),
+            evaluation="A",
+            degrees_of_freedom=float(freedom),
+            source="repeated scans",
+            is_default=False,
+        )
+        if quantity.name in voltages
+        else quantity
+        for quantity in model.inputs
+    )
+    return with_gls_weights(replace(model, inputs=inputs)), relative
+
+
+def add_scatter(model: MeasurementModel) -> tuple[MeasurementModel, float]:
+    """Add an input for scatter between voltages that no other input explains.
+
+    The scatter is the one that brings chi-square down to its degrees of freedom (R. C. Paule
+    and J. Mandel, J. Res. NBS 87, 377 (1982)); it is added only if chi-square is so large by
+    chance in less than 1 % of cases.
+
+    Returns
+    -------
+    model : MeasurementModel
+        Unchanged, or with inputs ``scan.<name>.scatter_deg``.
+    relative : float
+        The scatter, relative; zero if none was added.
+    """
+    n = len(model.scans)
+    base = _log_covariance(model)
+    log_h = np.log(single_planck_J_s(model))
+    chi2 = _chi2(log_h, base)
+    if n < 3 or chi2_distribution.sf(chi2, n - 1) >= SCATTER_CHANCE:
+        return model, 0.0
+    low, high = 0.0, 4.0 * float(np.var(log_h)) * n
+    for _ in range(60):
+        middle = 0.5 * (low + high)
+        if _chi2(log_h, base + middle * np.eye(n)) > n - 1:
+            low = middle
+        else:
+            high = middle
+    relative = math.sqrt(high)
+    zero = next(q.value for q in model.inputs if q.name == names.ZERO)
+    tangents = np.degrees(np.tan(np.radians(model.reading_deg - zero)))
+    extra = tuple(
+        Quantity(
+            f"scan.{scan}.scatter_deg",
+            "δθ_s",
+            0.0,
+            relative * float(tangent),
+            "°",
+            evaluation="A",
+            degrees_of_freedom=float(n - 1),
+            common=False,
+            source="scatter between voltages",
+        )
+        for scan, tangent in zip(model.scans, tangents, strict=True)
+    )
+    m = len(model.inputs)
+    correlation = np.eye(m + n)
+    correlation[:m, :m] = model.correlation
+    widened = replace(
+        model,
+        inputs=model.inputs + extra,
+        correlation=correlation,
+        responses_deg=np.concatenate([model.responses_deg, np.eye(n)], axis=1),
+    )
+    return with_gls_weights(widened), relative
+
+
+def _log_covariance(model: MeasurementModel) -> FloatArray:
+    """Covariance of ln h_i at the fitted relation."""
+    planck = np.array([model.weights @ single_planck_J_s(model)])
+    values = names.estimates(model)[:, np.newaxis]
+    fitted = names.predicted_reading_deg(model, planck, values)[:, 0]
+    reading = fitted if bool(np.all(np.isfinite(fitted))) else model.reading_deg
+    sensitivities = log_sensitivities(model, reading)
+    return np.asarray(sensitivities @ input_covariance(model) @ sensitivities.T)
+
+
+def _chi2(log_h: FloatArray, covariance: FloatArray) -> float:
+    """Least chi-square of equal values with a covariance."""
+    inverse = np.linalg.pinv(covariance, rcond=1e-14, hermitian=True)
+    ones = np.ones_like(log_h)
+    mean = float(ones @ inverse @ log_h) / float(ones @ inverse @ ones)
+    return float((log_h - mean) @ inverse @ (log_h - mean))
+
+
+def relate(model: MeasurementModel, scatter: float, repeat: float | None) -> Relation:
+    """Fit the inverse relation and test it.
+
+    Parameters
+    ----------
+    model : MeasurementModel
+        With n scans and its weights.
+    scatter : float
+        From `add_scatter`.
+    repeat : float or None
+        From `learn_repeatability`.
+    """
+    values = names.estimates(model)
+    wavelengths = np.asarray(names.cutoff_wavelength_pm(model, values))
+    voltages = np.asarray(names.peak_voltage_kV(model, values))
+    single = single_planck_J_s(model)
+    planck = float(model.weights @ single)
+    slope = planck / PLANCK_PER_SLOPE
+    sensitivities = log_sensitivities(model, model.reading_deg)
+    covariance = input_covariance(model)
+    by_voltage = np.array(
+        [
+            quantity.name in VOLTAGE_INPUTS or quantity.name.endswith(".voltage_kV")
+            for quantity in model.inputs
+        ]
+    )
+    optical = np.where(by_voltage, 0.0, sensitivities)
+    electrical = np.where(by_voltage, sensitivities, 0.0)
+    fitted = slope / voltages
+    log_wavelength = optical @ covariance @ optical.T
+    log_voltage = electrical @ covariance @ electrical.T
+    log_covariance = _log_covariance(model)
+    n = len(model.scans)
+    chi2 = _chi2(np.log(single), log_covariance)
+    slope_u = slope * math.sqrt(float(model.weights @ log_covariance @ model.weights))
+    free_slope, intercept, exponent, exponent_u = math.nan, math.nan, math.nan, math.nan
+    free_covariance = np.full((2, 2), math.nan)
+    if len(set(model.displayed_kV.tolist())) >= 3:
+        inverse = 1.0 / voltages
+        line = fit_straight_line(
+            inverse,
+            wavelengths,
+            np.outer(inverse, inverse) * log_voltage,
+            np.outer(fitted, fitted) * log_wavelength,
+        )
+        free_slope, intercept, free_covariance = line.slope, line.intercept, line.covariance
+        power = fit_straight_line(
+            np.log(voltages), np.log(wavelengths), log_voltage, log_wavelength
+        )
+        exponent, exponent_u = -power.slope, power.slope_u
+    return Relation(
+        scans=model.scans,
+        voltages_kV=voltages,
+        wavelengths_pm=wavelengths,
+        covariance_pm2=np.outer(wavelengths, wavelengths) * log_wavelength,
+        voltage_covariance_kV2=np.outer(voltages, voltages) * log_voltage,
+        weights=model.weights,
+        slope_pm_kV=slope,
+        slope_u_pm_kV=slope_u,
+        free_slope_pm_kV=free_slope,
+        intercept_pm=intercept,
+        free_covariance=free_covariance,
+        exponent=exponent,
+        exponent_u=exponent_u,
+        chi2=chi2,
+        degrees_of_freedom=n - 1,
+        birge_ratio=math.sqrt(chi2 / (n - 1)) if n > 1 else math.nan,
+        scatter_relative=scatter,
+        influence=_influence(model, planck, planck * slope_u / slope),
+        repeat_u_relative=repeat,
+    )
+
+
+def _influence(model: MeasurementModel, planck: float, u: float) -> tuple[Influence, ...]:
+    """Leave each voltage out in turn."""
+    if len(model.scans) < 2:
+        return ()
+    found = []
+    for i, scan in enumerate(model.scans):
+        rest = without(model, i)
+        value = float(gls_weights(rest) @ single_planck_J_s(rest))
+        found.append(
+            Influence(
+                scan=scan,
+                tube_voltage_kV=float(model.displayed_kV[i]),
+                value_without_J_s=value,
+                shift_in_u=(planck - value) / u,
+                weight=float(model.weights[i]),
+            )
+        )
+    return tuple(found)
+
+
+def without(model: MeasurementModel, row: int) -> MeasurementModel:
+    """Return the model without one scan and its own inputs; the weights are left to the caller."""
+    keep = np.arange(len(model.scans)) != row
+    prefix = f"scan.{model.scans[row]}."
+    columns = np.array(
+        [quantity.common or not quantity.name.startswith(prefix) for quantity in model.inputs]
+    )
+    return replace(
+        model,
+        scans=tuple(scan for scan, kept in zip(model.scans, keep, strict=True) if kept),
+        displayed_kV=model.displayed_kV[keep],
+        reading_deg=model.reading_deg[keep],
+        inputs=tuple(q for q, kept in zip(model.inputs, columns, strict=True) if kept),
+        correlation=model.correlation[np.ix_(columns, columns)],
+        responses_deg=model.responses_deg[np.ix_(keep, columns)],
+        weights=np.full(int(keep.sum()), 1.0 / int(keep.sum())),
+        skew=model.skew[keep],
+    )
