@@ -63,6 +63,13 @@ def voltage_name(scan: str) -> str:
     return f"scan.{scan}.voltage_kV"
 
 
+def required_inputs(scans: tuple[str, ...]) -> list[str]:
+    """Names of the inputs without which `planck_J_s` is undefined."""
+    common = [GAIN, OFFSET, RIPPLE, WORK_FUNCTION]
+    common += [SPACING, TEMPERATURE, EXPANSION, REFRACTION, ZERO]
+    return common + [voltage_name(scan) for scan in scans]
+
+
 def estimates(model: MeasurementModel) -> FloatArray:
     """Estimates of the inputs, shape (m,)."""
     return np.array([quantity.value for quantity in model.inputs])
