@@ -149,6 +149,11 @@ def test_the_numbers_are_those_of_the_determination(determination, document):
     u = np.sqrt(np.diag(covariance))
     assert used["fit"]["correlation"] == pytest.approx(covariance[0] / u[0] / u)
     assert document["read_backwards"]["implied_spacing_pm"] == 281.6
+    for entry, row in zip(document["budget"], determination.budget.rows, strict=True):
+        assert entry["contribution_J_s"] == row.contribution
+        assert entry["sensitivity"] == row.sensitivity
+        assert entry["standard_uncertainty"] == row.standard_uncertainty
+    assert min(row["contribution_J_s"] for row in document["budget"]) < 0, "signed"
     assert sum(row["variance_share"] for row in document["budget"]) == pytest.approx(1.0)
     assert document["relation"]["intercept"] == determination.relation.intercept_pm
 
