@@ -1,0 +1,180 @@
+"""How probable a claim is under each way of doing the arithmetic.
+
+Logarithms of the claimed numbers are compared with their prediction by a normal distribution.
+Its covariance holds what the re-analysis does not know, the claim's rounding, and the scatter
+that ordinary reading by people has: between voltages, common to all, and in the arithmetic.
+Nobody states these three, so a grid of them is tried.
+"""
+
+from __future__ import annotations
+
+import itertools
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import chdtrc, logsumexp
+
+from hdetermine.classcheck.alignment import Alignment
+from hdetermine.classcheck.arithmetic import PROPER, Combination, Prediction, Variant, predict
+
+FloatArray = NDArray[np.float64]
+
+ZERO_READING_U_deg = 0.01
+"""How well people take a zero over from the lines, besides what the re-analysis states."""
+
+
+@dataclass(frozen=True, slots=True)
+class Scatter:
+    """Relative standard deviations of reading by people: of each cutoff, of all, of h."""
+
+    single: float
+    common: float
+    arithmetic: float
+
+
+def _grid(
+    single: Sequence[float], common: Sequence[float], arithmetic: Sequence[float]
+) -> tuple[Scatter, ...]:
+    return tuple(Scatter(*values) for values in itertools.product(single, common, arithmetic))
+
+
+ORDINARY = _grid((0.002, 0.006, 0.012, 0.02), (0.002, 0.007, 0.015), (0.002, 0.01))
+"""Scatter of honest readings: 1 to 2 % is common practice, no source."""
+ORDINARY_WITHOUT_CUTOFFS = _grid((0.002, 0.007, 0.02), (0.002, 0.007, 0.015), (0.002, 0.01, 0.02))
+"""For a claim of h alone, where the arithmetic cannot be followed."""
+COARSE = _grid((0.004, 0.015), (0.004, 0.015), (0.002, 0.01))
+"""A thinner grid for combinations of two slips."""
+ANYTHING = _grid((0.01, 0.1), (0.05, 0.2, 1.0, 5.0), (0.01, 0.2, 5.0))
+"""A mistake that no catalogue foresees."""
+STATED_ONLY = _grid((0.001,), (0.001,), (0.001,))
+"""For a claim against itself: its cutoffs are what it says they are."""
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Weights:
+    """What one variant with each of F factors makes of a claim.
+
+    Attributes
+    ----------
+    log_mean : ndarray, shape (F,)
+        Log likelihood, averaged over combinations and scatter; -inf where impossible.
+    log_best : ndarray, shape (F,)
+        The largest of them.
+    fit_probability : ndarray, shape (F,)
+        Largest probability of chi squared.
+    planck_J_s : float
+        h predicted by the combination that fits best without a factor; nan if h is not claimed.
+    """
+
+    log_mean: FloatArray
+    log_best: FloatArray
+    fit_probability: FloatArray
+    planck_J_s: FloatArray
+
+
+def factor_shifts(alignment: Alignment, factors: Sequence[Variant]) -> FloatArray:
+    """What multiplying variants add to the logarithms of the claimed numbers, shape (F, m)."""
+    rows = alignment.rows
+    shifts = np.zeros((len(factors), rows.size))
+    for index, factor in enumerate(factors):
+        wavelength = np.log(factor.wavelength_factor)
+        shifts[index, rows.angles.size :] = wavelength
+        if rows.with_h:
+            shifts[index, -1] = wavelength + np.log(factor.planck_factor)
+    return shifts
+
+
+def weigh(
+    alignment: Alignment, variant: Variant, shifts: FloatArray, grid: Sequence[Scatter]
+) -> Weights:
+    """Weigh one variant, with each of several factors, against a claim.
+
+    Parameters
+    ----------
+    alignment : Alignment
+        Claim and data.
+    variant : Variant
+        How the arithmetic was done.
+    shifts : ndarray, shape (F, m)
+        From `factor_shifts`.
+    grid : sequence of Scatter
+        Scatter that is tried.
+
+    Returns
+    -------
+    Weights
+    """
+    combinations: tuple[Combination, ...] = PROPER
+    if variant.combine is not None or not alignment.rows.with_h:
+        combinations = PROPER[:1]
+    pieces = []
+    for combine in combinations:
+        prediction = predict(alignment.evidence, variant, combine, alignment.rows)
+        if prediction is not None:
+            pieces.append(_one(alignment, variant, prediction, shifts, grid))
+    if not pieces:
+        nothing = np.full(len(shifts), -np.inf)
+        return Weights(nothing, nothing, np.zeros(len(shifts)), np.full(len(shifts), np.nan))
+    log_likelihood = np.concatenate([piece[0] for piece in pieces])
+    probability = np.concatenate([piece[1] for piece in pieces])
+    h = np.concatenate([piece[2] for piece in pieces])
+    # A combination that cannot be done counts as one that was not done.
+    log_mean = logsumexp(log_likelihood, axis=0) - np.log(len(grid) * len(combinations))
+    best = np.argmax(log_likelihood, axis=0)
+    columns = np.arange(len(shifts))
+    return Weights(
+        np.asarray(log_mean), log_likelihood[best, columns], np.max(probability, axis=0),
+        h[best, columns],
+    )  # fmt: skip
+
+
+def _one(
+    alignment: Alignment,
+    variant: Variant,
+    prediction: Prediction,
+    shifts: FloatArray,
+    grid: Sequence[Scatter],
+) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Log likelihood, probability of chi squared and h, each of shape (grid, F)."""
+    covariance = _covariances(alignment, variant, prediction, grid)
+    lower = np.linalg.cholesky(covariance)
+    residual = alignment.log_values - prediction.log_values - shifts
+    white = np.linalg.solve(lower, np.broadcast_to(residual.T, (len(grid), *residual.T.shape)))
+    chi2 = np.sum(white**2, axis=1)
+    m = residual.shape[1]
+    log_det = 2.0 * np.sum(np.log(np.diagonal(lower, axis1=1, axis2=2)), axis=1)
+    log_likelihood = -0.5 * (chi2 + log_det[:, np.newaxis] + m * np.log(2.0 * np.pi))
+    with_h = alignment.rows.with_h
+    log_h = prediction.log_values[-1] + shifts[:, -1] if with_h else np.full(len(shifts), np.nan)
+    h = np.broadcast_to(np.exp(log_h), log_likelihood.shape)
+    return log_likelihood, chdtrc(m, chi2), h
+
+
+def _covariances(
+    alignment: Alignment, variant: Variant, prediction: Prediction, grid: Sequence[Scatter]
+) -> FloatArray:
+    """Covariance of the logarithms for each scatter of the grid, shape (grid, m, m)."""
+    evidence, rows = alignment.evidence, alignment.rows
+    response = prediction.response
+    m = response.shape[0]
+    # Whoever reads off the same counts by a shortcut shares their counting statistics.
+    own = evidence.own_u if variant.angle_deg is None else np.zeros(evidence.size)
+    per_zero = np.sum(response * np.radians(1.0) / np.tan(np.radians(evidence.angle_deg)), axis=1)
+    zero_u = np.hypot(evidence.zero_u_deg, ZERO_READING_U_deg)
+    fixed = (response * own**2) @ response.T + zero_u**2 * np.outer(per_zero, per_zero)
+    fixed = fixed + np.diag(alignment.rounding_u**2)
+    if rows.with_h and not (rows.angles.size or rows.wavelengths.size):
+        fixed[-1, -1] += alignment.own_u**2
+    independent = response @ response.T
+    total = np.sum(response, axis=1)
+    common = np.outer(total, total)
+    single = np.array([scatter.single**2 for scatter in grid])[:, np.newaxis, np.newaxis]
+    all_u = np.array([scatter.common**2 for scatter in grid])[:, np.newaxis, np.newaxis]
+    covariance: FloatArray = fixed + single * independent + all_u * common
+    if rows.with_h:
+        arithmetic = np.array([scatter.arithmetic**2 for scatter in grid])
+        covariance[:, -1, -1] += arithmetic
+    covariance[:, np.arange(m), np.arange(m)] += 1e-12
+    return covariance
