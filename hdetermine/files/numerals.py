@@ -9,9 +9,12 @@ from typing import Literal
 Decimal = Literal["point", "comma"]
 
 _EXPONENT = re.compile(r"[eE][+-]?[0-9]{1,4}$")
-_LOOSE = re.compile(r"[+-]?(?=.*[0-9])[0-9.,'’ \u00a0\u2009\u202f]*(?:[eE][+-]?[0-9]{1,4})?$")
 _SPACES = "'’ \u00a0\u2009\u202f"
 _SPACED = re.compile(rf"[0-9]{{1,3}}(?:[{_SPACES}][0-9]{{3}})+(?![0-9])")
+_SHAPE = re.compile(
+    r"[+-]?(?:[0-9]+[.,]?[0-9]*|[.,][0-9]+"
+    rf"|[0-9]{{1,3}}(?:[.,{_SPACES}][0-9]{{3}})+(?:[.,][0-9]*)?)(?:[eE][+-]?[0-9]{{1,4}})?"
+)
 _LONGEST = 60
 
 
@@ -21,9 +24,9 @@ def tidy(text: str) -> str:
 
 
 def looks_numeric(text: str) -> bool:
-    """Whether a cell consists of the characters of one number."""
+    """Whether a cell has the shape of one number, whatever its decimal mark."""
     text = tidy(text)
-    return len(text) <= _LONGEST and _LOOSE.match(text) is not None
+    return len(text) <= _LONGEST and _SHAPE.fullmatch(text) is not None
 
 
 class Marks:

@@ -190,20 +190,7 @@ def settle(rule: InputRule, stated: StatedQuantity | None, where: str) -> Quanti
     if stated.u is None:
         stated = _with_default_spread(rule, stated)
     assert stated.u is not None
-    reach = stated.u * HALF_WIDTH_DIVISOR.get(stated.distribution, _SUPPORT_IN_U)
-    bounded = stated.distribution in HALF_WIDTH_DIVISOR
-    slack = 1e-12 * max(1.0, abs(stated.value))
-    for end, limit, sign in (
-        (stated.value - reach, rule.support[0], 1.0),
-        (stated.value + reach, rule.support[1], -1.0),
-    ):
-        beyond = sign * (limit - end) > slack or (limit == 0.0 and end <= 0.0 and low > 0.0)
-        if beyond and (bounded or low > 0.0):
-            unit = "" if rule.unit == "1" else f" {rule.unit}"
-            raise InputError(
-                f"{where}: key {rule.key}: its uncertainty lets it reach {end:.4g}{unit}, beyond "
-                f"{limit:g}{unit}, where it has no meaning; state a smaller one."
-            )
+    _check_support(rule, stated, where)
     return Quantity(
         name=rule.key,
         symbol=rule.symbol,
@@ -218,6 +205,31 @@ def settle(rule: InputRule, stated: StatedQuantity | None, where: str) -> Quanti
         note=stated.note,
         is_default=is_default,
     )
+
+
+def _check_support(rule: InputRule, stated: StatedQuantity, where: str) -> None:
+    """Refuse a distribution that reaches where the model is undefined.
+
+    A normal or t distribution has no ends; it is held against the limits at five standard
+    uncertainties, and only where the estimate itself must stay off the limit.
+    """
+    assert stated.u is not None
+    divisor = HALF_WIDTH_DIVISOR.get(stated.distribution)
+    reach = stated.u * (_SUPPORT_IN_U if divisor is None else divisor)
+    low, high = rule.support
+    if divisor is None and rule.allowed[0] <= low:
+        return
+    slack = 1e-12 * max(1.0, abs(stated.value))
+    unit = "" if rule.unit == "1" else f" {rule.unit}"
+    for end, limit, beyond in (
+        (stated.value - reach, low, low - (stated.value - reach)),
+        (stated.value + reach, high, stated.value + reach - high),
+    ):
+        if beyond > slack or (divisor is None and beyond >= 0.0):
+            raise InputError(
+                f"{where}: key {rule.key}: its uncertainty lets it reach {end:.4g}{unit}, but "
+                f"beyond {limit:g}{unit} it has no meaning; state a smaller uncertainty."
+            )
 
 
 def _with_default_spread(rule: InputRule, stated: StatedQuantity) -> StatedQuantity:

@@ -23,7 +23,8 @@ from hdetermine.files.plaintext import plain_text, quoted
 from hdetermine.files.quantities import describe
 from hdetermine.files.runfolder import RunFolder
 from hdetermine.files.scantable import read_points
-from hdetermine.files.sheetmodel import RunSheet, ScanPart, TableReading, check_sheet
+from hdetermine.files.sheetcheck import check_sheet
+from hdetermine.files.sheetmodel import RunSheet, ScanPart, TableReading
 from hdetermine.files.tables import Table, read_table
 from hdetermine.records.apparatus import Apparatus
 from hdetermine.records.run import Run, SheetEntry

@@ -5,10 +5,9 @@ from __future__ import annotations
 import datetime
 from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, ConfigDict, Field, PlainValidator, ValidationError
+from pydantic import BaseModel, ConfigDict, Field, PlainValidator
 
-from hdetermine.errors import InputError
-from hdetermine.files.limits import MAX_SCANS, MAX_TEXT_CHARACTERS
+from hdetermine.files.limits import MAX_TEXT_CHARACTERS
 from hdetermine.files.plaintext import plain_text, quoted
 from hdetermine.files.quantities import StatedQuantity, finite_number, nearest, parse_stated
 from hdetermine.physics.elements import ATOMIC_NUMBER
@@ -230,83 +229,3 @@ class RunSheet(_Part):
     every_scan: TableReading = TableReading()
     scan: Annotated[tuple[ScanPart, ...], Field(strict=False)]
     truth: dict[str, Any] = {}
-
-
-def check_sheet(content: dict[str, Any], where: str) -> RunSheet:
-    """Check the content of a run sheet.
-
-    Parameters
-    ----------
-    content : dict
-        As the TOML reader returned it.
-    where : str
-        Name of the file, for messages.
-
-    Returns
-    -------
-    RunSheet
-
-    Raises
-    ------
-    InputError
-        Naming the file, the key, what was found and what is allowed.
-    """
-    version = content.get("schema")
-    if version != 1 or isinstance(version, bool):
-        found = "nothing" if version is None else quoted(version)
-        raise InputError(f"{where}: key schema: found {found}; allowed is schema = 1.")
-    scans = content.get("scan")
-    if not isinstance(scans, list) or not scans:
-        raise InputError(
-            f"{where}: no scan is listed; add a [[scan]] with file and tube_voltage_kV for each."
-        )
-    if len(scans) > MAX_SCANS:
-        raise InputError(
-            f"{where}: {len(scans)} scans are more than the {MAX_SCANS} that a run may have; "
-            "split the run."
-        )
-    try:
-        return RunSheet.model_validate(content)
-    except ValidationError as error:
-        raise InputError(_sentence(error, where)) from None
-
-
-def _sentence(error: ValidationError, where: str) -> str:
-    """Turn the first of pydantic's findings into one sentence."""
-    findings = error.errors(include_url=False)
-    first = min(findings, key=lambda finding: finding["type"] != "extra_forbidden")
-    place = [part for part in first["loc"] if part != "schema_"]
-    key = _key(place)
-    kind = first["type"]
-    if kind == "extra_forbidden":
-        known = _known_keys(place[:-1])
-        said = f"there is no such key{nearest(str(place[-1]), known)}"
-        if not nearest(str(place[-1]), known):
-            said += f"; known here are {', '.join(known)}"
-    elif kind == "missing":
-        said = "it is missing; add it"
-    elif kind == "value_error":
-        said = str(first["ctx"]["error"])
-    elif kind in ("model_type", "model_attributes_type", "dict_type"):
-        said = f"found {quoted(first['input'])}; allowed is a table of keys"
-    else:
-        said = f"found {quoted(first['input'])}; {first['msg'][0].lower()}{first['msg'][1:]}"
-    more = f" (and {len(findings) - 1} more)" if len(findings) > 1 else ""
-    return f"{where}: key {key}: {said}{more}."
-
-
-def _key(place: list[int | str]) -> str:
-    text = ""
-    for part in place:
-        text += f"[{part + 1}]" if isinstance(part, int) else f".{plain_text(part[:80])}"
-    return text.lstrip(".")
-
-
-def _known_keys(place: list[int | str]) -> tuple[str, ...]:
-    """Keys that the model allows at a place of the sheet."""
-    model: Any = RunSheet
-    for part in place:
-        if isinstance(part, int):
-            continue
-        model = ScanPart if part == "scan" else model.model_fields[part].annotation
-    return tuple(field.alias or name for name, field in model.model_fields.items())

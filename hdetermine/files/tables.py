@@ -11,9 +11,18 @@ from hdetermine.files.headers import meaning_of
 from hdetermine.files.limits import MAX_CELLS, check_limit
 from hdetermine.files.numerals import looks_numeric, tidy
 from hdetermine.files.plaintext import plain_text, quoted
-from hdetermine.files.texttable import TextLines, comment_cells, decode, split_lines
+from hdetermine.files.texttable import (
+    TextLines,
+    comment_cells,
+    decode,
+    is_comment,
+    split_lines,
+)
 
 Cell = str | float | bool | datetime.date | datetime.time | datetime.timedelta | None
+_Row = tuple[int, list[Cell]]
+
+_NO_NUMBERS = "there are no rows of numbers below its header; put the counts into it."
 
 
 @dataclass(frozen=True, slots=True)
@@ -96,10 +105,12 @@ def read_table(data: bytes, where: str, sheet: str | None = None) -> Table:
         In one sentence that names the file, the place and the remedy.
     """
     if data.startswith(b"PK\x03\x04"):
-        from hdetermine.files.spreadsheet import read_grid
+        from hdetermine.files.spreadsheet import choose_sheet, read_sheets
 
-        name, rows = read_grid(data, where, sheet)
-        return _from_grid(rows, f"{where}, sheet {quoted(name)}")
+        sheets = read_sheets(data, where)
+        with_data = [name for name, rows in sheets.items() if _first_data_row(rows) is not None]
+        name = choose_sheet(sheets, with_data, sheet, where)
+        return _from_grid(sheets[name], f"{where}, sheet {quoted(name)}")
     if sheet is not None:
         raise InputError(
             f"{where}: sheet {quoted(sheet)} is asked for, but this is a text file; leave sheet "
@@ -109,98 +120,88 @@ def read_table(data: bytes, where: str, sheet: str | None = None) -> Table:
 
 
 def _from_text(lines: TextLines, where: str) -> Table:
-    rows: list[list[Cell]] = [[cell or None for cell in row] for row in lines.rows]
-    start = _first_data_row(rows)
+    rows: list[_Row] = [(number, [cell or None for cell in cells]) for number, cells in lines.rows]
+    start = _first_data_row([cells for _, cells in rows])
     if start is None:
-        raise InputError(
-            f"{where}: there are no rows of numbers below its header; put the counts into it."
-        )
-    titles: list[str] = []
+        raise InputError(f"{where}: {_NO_NUMBERS}")
+    first_line = rows[start][0]
+    titles = [line for number, line in lines.other if number < first_line]
     for number, line in lines.other:
-        comment = line.lstrip().startswith(("#", "%", "!", "//"))
-        if number > lines.numbers[start] and not comment:
+        if number > first_line and not is_comment(line):
             raise InputError(
                 f"{where}, line {number}: {quoted(line, 40)} is not a row like the others; correct "
                 "it, or start it with # to make it a comment."
             )
-        if number < lines.numbers[start]:
-            titles.append(line)
     header = rows[:start]
-    width = max(len(row) for row in rows[start : start + 1])
     if not header:
-        for line in reversed(titles):
-            cells = comment_cells(line, width)
+        for number, line in reversed(lines.other):
+            cells = comment_cells(line, lines.width) if number < first_line else None
             if cells and not all(looks_numeric(cell) for cell in cells if cell):
-                header = [[cell or None for cell in cells]]
+                header = [(number, [cell or None for cell in cells])]
                 break
-    shown = tuple(plain_text(line) for line in titles)
-    return _assemble(
-        rows[start:], header, lines.numbers[start:], lines.numbers, where, False, shown
-    )
+    return _assemble(header, rows[start:], where, False, titles)
 
 
 def _from_grid(rows: Sequence[Sequence[Cell]], where: str) -> Table:
-    filled: list[list[Cell]] = []
-    numbers: list[int] = []
+    filled: list[_Row] = []
     for number, row in enumerate(rows, start=1):
-        cells: list[Cell] = [
-            (cell.strip() or None) if isinstance(cell, str) else cell for cell in row
-        ]
+        cells = [(cell.strip() or None) if isinstance(cell, str) else cell for cell in row]
         if any(cell is not None for cell in cells):
-            filled.append(cells)
-            numbers.append(number)
-    start = _first_data_row(filled)
+            filled.append((number, cells))
+    start = _first_data_row([cells for _, cells in filled])
     if start is None:
-        raise InputError(
-            f"{where}: there are no rows of numbers below its header; put the counts into it."
-        )
-    header = filled[:start]
-    titles = tuple(
-        plain_text(" ".join(str(cell) for cell in row if cell is not None)) for row in header
-    )
-    return _assemble(filled[start:], header, numbers[start:], numbers, where, True, titles)
+        raise InputError(f"{where}: {_NO_NUMBERS}")
+    return _assemble(filled[:start], filled[start:], where, True, [])
 
 
 def _assemble(
-    rows: list[list[Cell]],
-    header: list[list[Cell]],
-    lines: list[int],
-    all_lines: list[int],
-    where: str,
-    spreadsheet: bool,
-    titles: tuple[str, ...],
+    header: list[_Row], rows: list[_Row], where: str, spreadsheet: bool, titles: list[str]
 ) -> Table:
-    width = len(rows[0])
-    for row, number in zip(rows, lines, strict=True):
-        if len(row) != width:
+    """Turn rows into columns; `titles` are lines above that do not belong to any column."""
+    width = len(rows[0][1])
+    for number, cells in rows:
+        if len(cells) != width:
             raise InputError(
-                f"{where}, line {number}: it has {len(row)} columns where the first row of "
+                f"{where}, line {number}: it has {len(cells)} columns where the first row of "
                 f"numbers has {width}; make the rows equally long."
             )
     check_limit(width * len(rows), MAX_CELLS, where, "cells")
-    header = [row for row in header if len(row) == width]
-    for row, number in zip(header, all_lines, strict=False):
-        _check_header(row, number, where, spreadsheet)
+    heads: list[list[Cell]] = []
+    for number, cells in header:
+        filled = [cell for cell in cells if cell is not None]
+        if len(filled) == 1 and cells[0] is not None and width > 1:
+            titles = [*titles, _as_text(filled[0])]
+        elif len(cells) == width:
+            _check_header(cells, number, where, spreadsheet)
+            heads.append(cells)
     columns = []
     for index in range(width):
-        cells = tuple(row[index] for row in rows)
-        parts = tuple(plain_text(_as_text(row[index])) for row in header if row[index] is not None)
-        if any(cell is not None for cell in cells):
-            columns.append(Column(index + 1, parts, cells))
-    return Table(where, tuple(columns), tuple(lines), spreadsheet, titles)
+        column = tuple(cells[index] for _, cells in rows)
+        parts = tuple(
+            plain_text(_as_text(head[index])) for head in heads if head[index] is not None
+        )
+        if any(cell is not None for cell in column):
+            columns.append(Column(index + 1, parts, column))
+    return Table(
+        where,
+        tuple(columns),
+        tuple(number for number, _ in rows),
+        spreadsheet,
+        tuple(plain_text(title) for title in titles),
+    )
 
 
 def _check_header(row: list[Cell], number: int, where: str, spreadsheet: bool) -> None:
     """Refuse a broken row of numbers that would pass for a header."""
     first = next(cell for cell in row if cell is not None)
-    numbers = [cell for cell in row if _is_number(cell)]
     others = [i for i, cell in enumerate(row) if cell is not None and not _is_number(cell)]
     starts_as_number = (
         isinstance(first, str)
         and tidy(first)[:1] in "0123456789.,+-"
         and meaning_of(first).role == "other"
     )
-    if numbers and (_is_number(first) or starts_as_number):
+    has_number = any(_is_number(cell) for cell in row)
+    if others and has_number and (_is_number(first) or starts_as_number):
         place = _place(where, number, others[0] + 1, spreadsheet)
         raise InputError(f"{place}: {quoted(row[others[0]], 40)} is not a number; correct it.")
 

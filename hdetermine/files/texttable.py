@@ -6,6 +6,7 @@ import codecs
 import csv
 import re
 import unicodedata
+from collections import Counter
 from dataclasses import dataclass
 
 from hdetermine.errors import InputError
@@ -45,17 +46,18 @@ class TextLines:
 
     Attributes
     ----------
-    rows : list of list of str
-        Cells of every line that has as many as the data.
-    numbers : list of int
-        Line number of each row.
+    rows : list of (int, list of str)
+        Line number and cells of every line that is split like the data, and of lines of numbers
+        that are not.
     other : list of (int, str)
         Lines that are not rows: titles and comments, with their numbers.
+    width : int
+        Cells of a row.
     """
 
-    rows: list[list[str]]
-    numbers: list[int]
+    rows: list[tuple[int, list[str]]]
     other: list[tuple[int, str]]
+    width: int
 
 
 def family_of(data: bytes) -> str:
@@ -139,25 +141,39 @@ def split_lines(text: str, where: str) -> TextLines:
             f"{where}: no separator (tab, semicolon, comma or blanks) splits its lines into "
             "columns of numbers; export it with semicolons or tabs between the columns."
         )
-    counts: dict[int, int] = {}
-    for _, line in candidates:
-        width = len(_cells(line, separator))
-        counts[width] = counts.get(width, 0) + 1
-    width = max(counts, key=lambda w: (counts[w], w))
-    check_limit(width, MAX_COLUMNS, where, "columns")
     check_limit(len(lines), MAX_ROWS, where, "lines")
-    result = TextLines([], [], [])
-    for number, line in lines:
-        is_comment = line.lstrip().startswith(_COMMENTS)
-        cells = _cells(line, separator)
-        if len(cells) != width and separator == " ":
+    split = [(number, line, _cells(line, separator)) for number, line in lines]
+    raw_width = _commonest([len(_cells(line, separator)) for _, line in candidates])
+    check_limit(raw_width, MAX_COLUMNS, where, "columns")
+    # A separator at the end of every line makes an empty last column: it is none.
+    width = max(_filled_width(cells) for *_, cells in split if len(cells) == raw_width)
+    result = TextLines([], [], width)
+    for number, line, found in split:
+        cells = found
+        if separator == " " and len(cells) != width:
             cells = [cell for cell in _WIDE_BLANKS.split(line.strip()) if cell]
-        if is_comment or (len(cells) != width and not _holds_numbers(cells)):
+        if is_comment(line):
             result.other.append((number, line))
+        elif len(cells) in (width, raw_width) and _filled_width(cells) <= width:
+            result.rows.append((number, (cells + [""] * width)[:width]))
+        elif any(cells) and all(looks_numeric(cell) for cell in cells if cell):
+            result.rows.append((number, cells))
         else:
-            result.rows.append(cells)
-            result.numbers.append(number)
+            result.other.append((number, line))
     return result
+
+
+def is_comment(line: str) -> bool:
+    """Whether a line starts with a comment sign."""
+    return line.lstrip().startswith(_COMMENTS)
+
+
+def _commonest(numbers: list[int]) -> int:
+    return max(Counter(numbers).items(), key=lambda item: (item[1], item[0]))[0]
+
+
+def _filled_width(cells: list[str]) -> int:
+    return max((i for i, cell in enumerate(cells, start=1) if cell), default=0)
 
 
 def comment_cells(line: str, width: int) -> list[str] | None:
@@ -173,12 +189,6 @@ def comment_cells(line: str, width: int) -> list[str] | None:
         if len(cells) == width:
             return cells
     return None
-
-
-def _holds_numbers(cells: list[str]) -> bool:
-    """Whether a line of another width still has to be taken for a row: it starts as one."""
-    filled = [cell for cell in cells if cell]
-    return bool(filled) and all(looks_numeric(cell) for cell in filled)
 
 
 def _logical_lines(text: str, where: str) -> list[tuple[int, str]]:
@@ -204,13 +214,13 @@ def _no_numbers(text: str) -> str:
 def _separator(lines: list[str]) -> str | None:
     for separator in ("\t", ";", "|", ",", " "):
         good = 0
-        widths: dict[int, int] = {}
+        widths: Counter[int] = Counter()
         for line in lines:
             cells = _cells(line, separator)
             filled = [cell for cell in cells if cell]
             if len(cells) > 1 and filled and all(looks_numeric(cell) for cell in filled):
                 good += 1
-                widths[len(cells)] = widths.get(len(cells), 0) + 1
+                widths[len(cells)] += 1
         if good >= 0.8 * len(lines) and max(widths.values(), default=0) >= 0.5 * len(lines):
             return separator
     return None
