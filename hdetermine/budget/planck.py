@@ -33,6 +33,7 @@ SCAN_GROUPS: Mapping[str, str] = {
     "window_deg": "spread between fit windows",
     "background_deg": "background shape",
     "voltage_kV": "voltage repeatability",
+    "scatter_deg": "scatter between scans",
 }
 
 

@@ -51,6 +51,7 @@ LARGEST_DEAD_FRACTION = 0.5
 LARGEST_MISFIT = 12.0  # deviance per degree of freedom
 PRODUCT_TOLERANCE = 0.12  # of sin(theta) U against the median of the run
 DROPOUT_DEVIANCE = 36.0
+RESOLUTION_TOLERANCE = 3.0  # in standard uncertainties, between edges and lines
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -108,21 +109,7 @@ def find_cutoffs(
             refused[scan.name] = outcome
         else:
             edges[scan.name] = outcome
-    answers: dict[str, float] = {}
-    if scale.resolution_from != "lines" and edges:
-        fits = tuple(edge.fit for edge in edges.values())
-        resolution, fits = common_resolution(fits, scale.resolution)
-        answers = resolution_answers(fits, resolution)
-        scale = replace(
-            scale,
-            resolution=resolution,
-            resolution_from="edges" if math.isinf(scale.resolution.standard_uncertainty)
-            else "run sheet and edges",
-        )
-        edges = {
-            name: replace(edge, given=fit.given, fit=fit)
-            for (name, edge), fit in zip(edges.items(), fits, strict=True)
-        }
+    scale, edges, answers = _settle_resolution(run, scale, edges)
     cutoffs = []
     for done, scan in enumerate(run.scans):
         if scan.name in refused:
@@ -132,6 +119,54 @@ def find_cutoffs(
         if progress is not None:
             progress("edges", done + 1, len(run.scans))
     return scale, tuple(cutoffs)
+
+
+def _settle_resolution(
+    run: Run, scale: AngleScale, edges: dict[str, _Edge]
+) -> tuple[AngleScale, dict[str, _Edge], dict[str, float]]:
+    """Decide which width the edges are fitted with, and how it answers to the other inputs."""
+    if not edges:
+        return scale, edges, {}
+    stated = scale.resolution
+    fits = tuple(edge.fit for edge in edges.values())
+    if scale.resolution_from == "lines":
+        free, refitted = common_resolution(fits, replace(stated, standard_uncertainty=math.inf))
+        answers = resolution_answers(refitted, free)
+        spread = sum(
+            (answers.get(quantity.name, 0.0) * quantity.standard_uncertainty) ** 2
+            for quantity in (*run.apparatus.quantities(), scale.kernel)
+        )
+        u = math.sqrt(free.standard_uncertainty**2 + spread)
+        pull = (free.value - stated.value) / math.hypot(u, stated.standard_uncertainty)
+        scale = replace(
+            scale, edge_resolution_deg=free.value, edge_resolution_u_deg=u, edge_pull=pull
+        )
+        if abs(pull) < RESOLUTION_TOLERANCE:
+            return scale, edges, {}
+        remark = (
+            f"the edges are smeared over {free.value:.2f}°, the lines over {stated.value:.2f}°; "
+            "the edges were fitted with their own width."
+        )
+        scale = replace(
+            scale,
+            resolution=free,
+            resolution_from="edges, against the lines",
+            remarks=(*scale.remarks, remark),
+        )
+    else:
+        free, refitted = common_resolution(fits, stated)
+        answers = resolution_answers(refitted, free)
+        unknown = math.isinf(stated.standard_uncertainty)
+        scale = replace(
+            scale,
+            resolution=free,
+            resolution_from="edges" if unknown else "run sheet and edges",
+        )
+    moved = {
+        name: replace(edge, given=fit.given, fit=fit)
+        for (name, edge), fit in zip(edges.items(), refitted, strict=True)
+    }
+    return scale, moved, answers
 
 
 def _obstacles(run: Run, scale: AngleScale, scan: Scan) -> tuple[Obstacle, ...]:

@@ -58,6 +58,11 @@ def background_name(scan: str) -> str:
     return f"scan.{scan}.background_deg"
 
 
+def scatter_name(scan: str) -> str:
+    """Name of the input that carries scatter between scans beyond all others, degrees."""
+    return f"scan.{scan}.scatter_deg"
+
+
 def voltage_name(scan: str) -> str:
     """Name of the input that carries the repeatability of the voltage, kV."""
     return f"scan.{scan}.voltage_kV"

@@ -171,18 +171,20 @@ def learn_repeatability(model: MeasurementModel) -> tuple[MeasurementModel, floa
 
 
 def add_scatter(model: MeasurementModel) -> tuple[MeasurementModel, float]:
-    """Add an input for scatter between voltages that no other input explains.
+    """Add an input for scatter between scans that no other input explains.
 
-    The scatter is the one that brings chi-square down to its degrees of freedom (R. C. Paule
-    and J. Mandel, J. Res. NBS 87, 377 (1982)); it is added only if chi-square is so large by
-    chance in less than 1 % of cases.
+    The scatter is taken as one of the angle, the same for every scan, as backlash or a badly
+    seated crystal would make it, and so large that chi-square comes down to its degrees of
+    freedom (R. C. Paule and J. Mandel, J. Res. NBS 87, 377 (1982)); being itself estimated from
+    n values it is widened by sqrt((n - 1)/(n - 3)) (O. Bodnar and C. Elster, Metrologia 51, 516
+    (2014)). It is added only if chi-square is so large by chance in less than 1 % of cases.
 
     Returns
     -------
     model : MeasurementModel
         Unchanged, or with inputs ``scan.<name>.scatter_deg``.
-    relative : float
-        The scatter, relative; zero if none was added.
+    scatter_deg : float
+        Its standard uncertainty; zero if none was added.
     """
     n = len(model.scans)
     base = _log_covariance(model)
@@ -190,40 +192,40 @@ def add_scatter(model: MeasurementModel) -> tuple[MeasurementModel, float]:
     chi2 = _chi2(log_h, base)
     if n < 3 or chi2_distribution.sf(chi2, n - 1) >= SCATTER_CHANCE:
         return model, 0.0
-    low, high = 0.0, 4.0 * float(np.var(log_h)) * n
+    zero = next(quantity.value for quantity in model.inputs if quantity.name == names.ZERO)
+    per_degree = np.pi / 180.0 / np.tan(np.radians(model.reading_deg - zero))
+    extra = np.diag(per_degree**2)
+    low, high = 0.0, 25.0
     for _ in range(60):
         middle = 0.5 * (low + high)
-        if _chi2(log_h, base + middle * np.eye(n)) > n - 1:
+        if _chi2(log_h, base + middle * extra) > n - 1:
             low = middle
         else:
             high = middle
-    relative = math.sqrt(high)
-    zero = next(q.value for q in model.inputs if q.name == names.ZERO)
-    tangents = np.degrees(np.tan(np.radians(model.reading_deg - zero)))
-    extra = tuple(
+    scatter_deg = math.sqrt(high) * (math.sqrt((n - 1) / (n - 3)) if n > 3 else 2.0)
+    own = tuple(
         Quantity(
-            f"scan.{scan}.scatter_deg",
+            names.scatter_name(scan),
             "δθ_s",
             0.0,
-            relative * float(tangent),
+            scatter_deg,
             "°",
             evaluation="A",
-            degrees_of_freedom=float(n - 1),
             common=False,
-            source="scatter between voltages",
+            source="scatter between scans",
         )
-        for scan, tangent in zip(model.scans, tangents, strict=True)
+        for scan in model.scans
     )
     m = len(model.inputs)
     correlation = np.eye(m + n)
     correlation[:m, :m] = model.correlation
     widened = replace(
         model,
-        inputs=model.inputs + extra,
+        inputs=model.inputs + own,
         correlation=correlation,
         responses_deg=np.concatenate([model.responses_deg, np.eye(n)], axis=1),
     )
-    return with_gls_weights(widened), relative
+    return with_gls_weights(widened), scatter_deg
 
 
 def _log_covariance(model: MeasurementModel) -> FloatArray:
@@ -311,7 +313,7 @@ def relate(model: MeasurementModel, scatter: float, repeat: float | None) -> Rel
         chi2=chi2,
         degrees_of_freedom=n - 1,
         birge_ratio=math.sqrt(chi2 / (n - 1)) if n > 1 else math.nan,
-        scatter_relative=scatter,
+        scatter_deg=scatter,
         influence=_influence(model, planck, planck * slope_u / slope),
         repeat_u_relative=repeat,
     )

@@ -1,4 +1,7 @@
-"""The resolution from the edges themselves, where neither lines nor run sheet tell it.
+"""The resolution from the edges themselves.
+
+Where neither lines nor run sheet tell the width, the edges must; where the lines tell it, the
+edges are asked whether they agree, for they stand at other angles.
 
 One width serves all scans. Each fit tells, by its profile likelihood, how it would like the
 width to change; the sum over the scans, with a stated width as a prior, is climbed by Newton
@@ -44,6 +47,18 @@ def _projected(fit: EdgeFit, left: FloatArray, right: FloatArray) -> float:
     return plain - float(to_left @ np.linalg.solve(best.information, to_right))
 
 
+def _pulls(fits: tuple[EdgeFit, ...]) -> tuple[FloatArray, FloatArray]:
+    """Score of the width in each scan, and its information."""
+    scores, information = [], []
+    for fit in fits:
+        by_width = _by_width(fit)
+        best = fit.maximum
+        surplus = (fit.window.counts - best.expected) / best.expected
+        scores.append(float(np.sum(by_width * surplus)))
+        information.append(max(_projected(fit, by_width, by_width), 0.0))
+    return np.array(scores), np.array(information)
+
+
 def common_resolution(
     fits: tuple[EdgeFit, ...], stated: Quantity
 ) -> tuple[Quantity, tuple[EdgeFit, ...]]:
@@ -70,13 +85,9 @@ def common_resolution(
     width = stated.value
     information = precision
     for _ in range(_ROUNDS):
-        score = -precision * (width - stated.value)
-        information = precision
-        for fit in fits:
-            by_width = _by_width(fit)
-            best = fit.maximum
-            score += float(np.sum(by_width * (fit.window.counts - best.expected) / best.expected))
-            information += max(_projected(fit, by_width, by_width), 0.0)
+        pulls, own = _pulls(fits)
+        score = float(pulls.sum()) - precision * (width - stated.value)
+        information = float(own.sum()) + precision
         if information <= 0.0:
             break
         move = float(np.clip(score / information, -0.4 * width, 0.4 * width))
@@ -88,6 +99,11 @@ def common_resolution(
         if abs(move) < 1e-3 * width:
             break
     u = information**-0.5 if information > 0.0 else 0.5 * width
+    pulls, own = _pulls(fits)
+    if len(fits) > 1 and not finite:
+        # Scans that want different widths tell that one width is an approximation.
+        chi2 = float(np.sum(pulls**2 / np.maximum(own, 1e-12)))
+        u *= math.sqrt(max(chi2 / (len(fits) - 1), 1.0))
     resolution = Quantity(
         name=names.RESOLUTION,
         symbol=stated.symbol,

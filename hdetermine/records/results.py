@@ -71,6 +71,9 @@ class AngleScale:
         where the lines do not allow it.
     zero_by_wavelength_deg : float
         Change of the zero per relative change of the reference wavelengths, degrees.
+    edge_resolution_deg, edge_resolution_u_deg, edge_pull : float or None
+        Width that the edges by themselves ask for, and its difference from that of the lines
+        in standard uncertainties; None where the lines did not tell a width.
     remarks : tuple of str
         Anything a careful reader should know.
     """
@@ -86,6 +89,9 @@ class AngleScale:
     free_spacing_pm: float | None = None
     free_spacing_u_pm: float | None = None
     zero_by_wavelength_deg: float = 0.0
+    edge_resolution_deg: float | None = None
+    edge_resolution_u_deg: float | None = None
+    edge_pull: float | None = None
     remarks: tuple[str, ...] = ()
 
 
@@ -235,8 +241,8 @@ class Relation:
         Of the line through the origin.
     birge_ratio : float
         sqrt(chi2/degrees_of_freedom) (Birge 1932); nan for a single voltage.
-    scatter_relative : float
-        Scatter between voltages beyond all stated inputs, relative; zero if none is needed.
+    scatter_deg : float
+        Scatter between scans beyond all other inputs, degrees; zero if none is needed.
     influence : tuple of Influence
         Leave-one-out.
     repeat_u_relative : float or None
@@ -259,7 +265,7 @@ class Relation:
     chi2: float
     degrees_of_freedom: int
     birge_ratio: float
-    scatter_relative: float = 0.0
+    scatter_deg: float = 0.0
     influence: tuple[Influence, ...] = ()
     repeat_u_relative: float | None = None
 
