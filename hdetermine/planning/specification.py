@@ -16,7 +16,8 @@ from hdetermine.files.limits import MAX_POINTS, MAX_RUN_POINTS, MAX_SHEET_BYTES,
 from hdetermine.files.plaintext import plain_text, quoted
 from hdetermine.files.runfolder import read_bytes
 from hdetermine.files.runsheet import parse_sheet
-from hdetermine.files.sheetmodel import RunSheet, ScanPart, check_sheet
+from hdetermine.files.sheetcheck import check_sheet
+from hdetermine.files.sheetmodel import RunSheet, ScanPart
 from hdetermine.physics.lines import K_EDGE_pm, line_groups
 from hdetermine.planning.truthtable import Sweep, TruthTable, check_truth
 from hdetermine.records.apparatus import Apparatus
