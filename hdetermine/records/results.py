@@ -243,6 +243,8 @@ class Relation:
         sqrt(chi2/degrees_of_freedom) (Birge 1932); nan for a single voltage.
     scatter_deg : float
         Scatter between scans beyond all other inputs, degrees; zero if none is needed.
+    stated_birge_ratio : float
+        The ratio before that scatter was added.
     influence : tuple of Influence
         Leave-one-out.
     repeat_u_relative : float or None
@@ -266,6 +268,7 @@ class Relation:
     degrees_of_freedom: int
     birge_ratio: float
     scatter_deg: float = 0.0
+    stated_birge_ratio: float = math.nan
     influence: tuple[Influence, ...] = ()
     repeat_u_relative: float | None = None
 
