@@ -4,79 +4,32 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from hdetermine.inference import measurement as names
-from hdetermine.inference.anglescale import crystal_spacing_pm, energy_eV, scan_features
-from hdetermine.inference.edgefamily import (
-    LEAST_ABOVE,
-    LEAST_BELOW,
-    Family,
-    Obstacle,
-    average,
-    best_start,
-    fit_family,
-    windows,
-)
+from hdetermine.inference.edgefamily import Family, average, best_start, fit_family, windows
 from hdetermine.inference.edgemodel import (
     EdgeFit,
     EdgeWindow,
-    LineTemplate,
-    Surroundings,
     expected_counts,
     likelihood_sides,
     response_deg,
 )
-from hdetermine.inference.edgesearch import search_edge
+from hdetermine.inference.firstfit import Edge, first_fit, first_guesses
 from hdetermine.inference.resolution import common_resolution, resolution_answers
-from hdetermine.inference.scoring import maximise
-from hdetermine.inference.smearing import Kernel
-from hdetermine.physics.bragg import glancing_angle_deg, wavelength_pm
-from hdetermine.physics.lines import K_EDGE_pm
+from hdetermine.inference.spacing import crystal_spacing_pm
+from hdetermine.physics.bragg import wavelength_pm
 from hdetermine.records.results import AngleScale, Cutoff, FittedCurve, WindowFit
 from hdetermine.records.run import Run
 from hdetermine.records.scan import Scan
 
 FloatArray = NDArray[np.float64]
 
-LINE_REACH_WIDTHS = 1.8  # a line disturbs the continuum so many widths from its centre
-ABSORPTION_REACH_WIDTHS = 0.7
-LINE_INSIDE_WIDTHS = 0.8  # a line so close above the edge cannot be told from it
-EDGE_SIGNIFICANCE = 20.0  # fall of the deviance when the edge is added
-LARGEST_RELATIVE_U = 0.05
-LARGEST_DEAD_FRACTION = 0.5
 LARGEST_MISFIT = 12.0  # deviance per degree of freedom
-PRODUCT_TOLERANCE = 0.12  # of sin(theta) U against the median of the run
-DROPOUT_DEVIANCE = 36.0
 RESOLUTION_TOLERANCE = 3.0  # in standard uncertainties, between edges and lines
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class _Edge:
-    """A scan on its way to a cutoff."""
-
-    scan: Scan
-    given: Surroundings
-    points: NDArray[np.bool_]
-    obstacles: tuple[Obstacle, ...]
-    fit: EdgeFit
-
-
-def surroundings(run: Run, scale: AngleScale, scan: Scan) -> Surroundings:
-    """What the fits of a scan take as given, inputs at their estimates."""
-    apparatus = run.apparatus
-    return Surroundings(
-        zero_deg=scale.zero.value,
-        kernel=Kernel(scale.resolution.value, scale.kernel.value),
-        excess=apparatus.continuum.near_limit_excess.value,
-        excess_energy_keV=apparatus.continuum.near_limit_energy_keV.value,
-        energy_keV=energy_eV(apparatus, scan.tube_voltage_kV) * 1e-3,
-        dead_time_us=apparatus.counter.dead_time_us.value,
-        dead_time_model=apparatus.counter.dead_time_model,
-    )
 
 
 def find_cutoffs(
@@ -100,11 +53,11 @@ def find_cutoffs(
     cutoffs : tuple of Cutoff
         One a scan, in the order of the run; their total uncertainty is still nan.
     """
-    edges: dict[str, _Edge] = {}
+    edges: dict[str, Edge] = {}
     refused: dict[str, str] = {}
-    guesses = _guesses(run, scale)
+    guesses = first_guesses(run, scale)
     for scan in run.scans:
-        outcome = _first_fit(run, scale, scan, guesses[scan.name])
+        outcome = first_fit(run, scale, scan, guesses[scan.name])
         if isinstance(outcome, str):
             refused[scan.name] = outcome
         else:
@@ -122,8 +75,8 @@ def find_cutoffs(
 
 
 def _settle_resolution(
-    run: Run, scale: AngleScale, edges: dict[str, _Edge]
-) -> tuple[AngleScale, dict[str, _Edge], dict[str, float]]:
+    run: Run, scale: AngleScale, edges: dict[str, Edge]
+) -> tuple[AngleScale, dict[str, Edge], dict[str, float]]:
     """Decide which width the edges are fitted with, and how it answers to the other inputs."""
     if not edges:
         return scale, edges, {}
@@ -169,218 +122,6 @@ def _settle_resolution(
     return scale, moved, answers
 
 
-def _obstacles(run: Run, scale: AngleScale, scan: Scan) -> tuple[Obstacle, ...]:
-    """Excited lines and absorption edges, as readings, by angle."""
-    width = scale.resolution.value
-    crystal = run.apparatus.crystal
-    found = []
-    for feature in scan_features(run, scan):
-        centres = [angle for angle, _, _ in feature.components]
-        template = LineTemplate(feature.components)
-        low = min(centres) + scale.zero.value - LINE_REACH_WIDTHS * width
-        high = max(centres) + scale.zero.value + LINE_REACH_WIDTHS * width
-        found.append(Obstacle(low, high, template))
-    absorbers = (*crystal.elements, run.apparatus.tube.filter)
-    for element in absorbers:
-        if element in K_EDGE_pm:
-            angle = float(
-                glancing_angle_deg(
-                    K_EDGE_pm[element], crystal_spacing_pm(crystal), crystal.refraction.value
-                )
-            )
-            if math.isfinite(angle):
-                reading = angle + scale.zero.value
-                reach = ABSORPTION_REACH_WIDTHS * width
-                found.append(Obstacle(reading - reach, reading + reach, None))
-    return tuple(sorted(found, key=lambda obstacle: obstacle.from_deg))
-
-
-def _clear_points(scan: Scan, obstacles: tuple[Obstacle, ...]) -> NDArray[np.bool_]:
-    clear = np.ones(scan.reading_deg.size, dtype=bool)
-    for obstacle in obstacles:
-        if obstacle.template is not None:
-            inside = (scan.reading_deg > obstacle.from_deg) & (scan.reading_deg < obstacle.to_deg)
-            clear &= ~inside
-    return clear
-
-
-def _guesses(run: Run, scale: AngleScale) -> dict[str, float | None]:
-    """First guesses; those far from the median of sin(theta) U are moved to it."""
-    guesses: dict[str, float | None] = {}
-    products = []
-    for scan in run.scans:
-        guess = None
-        if scan.edge and not scan.leave_out:
-            guess = search_edge(scan, _clear_points(scan, _obstacles(run, scale, scan)))
-        guesses[scan.name] = guess
-        if guess is not None:
-            sine = math.sin(math.radians(guess - scale.zero.value))
-            products.append(sine * scan.tube_voltage_kV)
-    if len(products) < 3:
-        return guesses
-    median = float(np.median(products))
-    for scan in run.scans:
-        sine = median / scan.tube_voltage_kV
-        if not 0.0 < sine < 1.0:
-            continue
-        expected = math.degrees(math.asin(sine)) + scale.zero.value
-        guess = guesses[scan.name]
-        if guess is None:
-            guesses[scan.name] = expected
-            continue
-        ratio = math.sin(math.radians(guess - scale.zero.value)) / sine
-        if abs(ratio - 1.0) > PRODUCT_TOLERANCE:
-            guesses[scan.name] = expected
-    return guesses
-
-
-def _first_fit(run: Run, scale: AngleScale, scan: Scan, guess: float | None) -> _Edge | str:
-    """Fit one generous window, or say why the scan carries no usable edge."""
-    if scan.leave_out:
-        return f"left out by the run sheet: {scan.leave_out}"
-    if not scan.edge:
-        return "reference scan: it serves the angle scale only"
-    if guess is None:
-        return "too few counts: no edge stands out from the background"
-    given = surroundings(run, scale, scan)
-    width = given.kernel.fwhm_deg
-    obstacles = _obstacles(run, scale, scan)
-    points = np.ones(scan.reading_deg.size, dtype=bool)
-    if scan.fit_from_deg is not None or scan.fit_to_deg is not None:
-        guess = _clamp(scan, guess)
-    reason = _range_refusal(scan, guess, width)
-    if reason:
-        return reason
-    above = tuple(obstacle for obstacle in obstacles if obstacle.to_deg > guess - 0.2 * width)
-    fit = _generous_fit(scan, points, guess, given, above)
-    if fit is None:
-        return _no_window(scan, guess, width, above)
-    reason = _line_inside(fit, above, given) or _range_refusal(scan, fit.reading_deg, width)
-    if reason:
-        return reason
-    reason = _saturated(fit) or _insignificant(fit)
-    if reason:
-        return reason
-    points = points & ~_dropouts(scan, fit)
-    if not points.all():
-        again = _generous_fit(scan, points, fit.reading_deg, given, above)
-        fit = again or fit
-    return _Edge(scan, given, points, above, fit)
-
-
-def _clamp(scan: Scan, guess: float) -> float:
-    low = scan.fit_from_deg if scan.fit_from_deg is not None else scan.reading_deg[0]
-    high = scan.fit_to_deg if scan.fit_to_deg is not None else scan.reading_deg[-1]
-    return guess if low < guess < high else 0.5 * (low + high)
-
-
-def _generous_fit(
-    scan: Scan,
-    points: NDArray[np.bool_],
-    guess: float,
-    given: Surroundings,
-    obstacles: tuple[Obstacle, ...],
-) -> EdgeFit | None:
-    best: EdgeFit | None = None
-    for _ in range(3):
-        members = [
-            window
-            for window in windows(scan, points, guess, given, obstacles)
-            if window.background_terms == 2
-        ]
-        if not members:
-            return best
-        members.sort(key=lambda window: (len(window.lines), -window.counts.size))
-        best = best_start(members[min(1, len(members) - 1)], guess, given)
-        if abs(best.reading_deg - guess) < 0.5 * given.kernel.fwhm_deg:
-            break
-        guess = best.reading_deg
-    return best
-
-
-def _range_refusal(scan: Scan, edge_deg: float, width: float) -> str:
-    below = int(np.sum(scan.reading_deg < edge_deg - 0.5 * width))
-    above = int(np.sum(scan.reading_deg > edge_deg + 0.5 * width))
-    if below < LEAST_BELOW:
-        return "no background below the edge: the scan starts too late"
-    if above < LEAST_ABOVE:
-        return "the edge lies outside the range or at the end of the scan"
-    return ""
-
-
-def _no_window(scan: Scan, guess: float, width: float, above: tuple[Obstacle, ...]) -> str:
-    if above and above[0].from_deg < guess + width:
-        return "a characteristic line or absorption edge stands too close above the edge"
-    return "too few points around the edge for a fit"
-
-
-def _line_inside(fit: EdgeFit, above: tuple[Obstacle, ...], given: Surroundings) -> str:
-    for obstacle in above:
-        if obstacle.template is None:
-            continue
-        first = min(angle for angle, _, _ in obstacle.template.components) + given.zero_deg
-        if abs(first - fit.reading_deg) < LINE_INSIDE_WIDTHS * given.kernel.fwhm_deg:
-            return "a characteristic line stands inside the smeared edge"
-    return ""
-
-
-def _saturated(fit: EdgeFit) -> str:
-    window = fit.window
-    recorded = window.counts / window.dwell_s
-    dead = float(recorded.max()) * fit.given.dead_time_us * 1e-6
-    limit = LARGEST_DEAD_FRACTION if fit.given.dead_time_model == "nonparalysable" else 0.3
-    if dead > limit:
-        return (
-            f"saturation: {recorded.max():.0f} recorded counts a second leave the counter dead "
-            f"for {100 * dead:.0f} % of the time"
-        )
-    top = window.counts.max()
-    at_top = window.counts == top
-    if top > 200 and int(at_top.sum()) >= 4 and bool(np.all(np.diff(np.flatnonzero(at_top)) == 1)):
-        return f"saturation: the counter stops at {top:.0f} counts"
-    return ""
-
-
-def _insignificant(fit: EdgeFit) -> str:
-    window = fit.window
-    position = np.linspace(-1.0, 1.0, window.counts.size)
-    design = np.stack([np.ones_like(position), position], axis=1)
-
-    def model(parameters: FloatArray) -> tuple[FloatArray, FloatArray]:
-        rate = window.dwell_s * np.exp(np.clip(design @ parameters, -30.0, 30.0))
-        return np.maximum(rate, 1e-9), rate[:, np.newaxis] * design
-
-    def prior(parameters: FloatArray) -> tuple[float, FloatArray, FloatArray]:
-        return 0.0, np.zeros(2), np.full(2, 1e-6)
-
-    mean = max(float(window.counts.sum()), 0.5) / float(window.dwell_s.sum())
-    start = np.array([math.log(mean), 0.0])
-    plain = maximise(window.counts, model, prior, start, np.full(2, 1.0))
-    if plain.deviance - fit.maximum.deviance < EDGE_SIGNIFICANCE:
-        return "too few counts: no edge stands out from the background"
-    relative = math.radians(fit.reading_u_deg) / math.tan(
-        math.radians(max(fit.reading_deg - fit.given.zero_deg, 0.1))
-    )
-    if relative > LARGEST_RELATIVE_U:
-        return f"too few counts: the cutoff would be uncertain by {100 * relative:.0f} %"
-    return ""
-
-
-def _dropouts(scan: Scan, fit: EdgeFit) -> NDArray[np.bool_]:
-    """Isolated readings far below both fit and neighbours (a counter that missed a step)."""
-    drop = np.zeros(scan.reading_deg.size, dtype=bool)
-    where = np.searchsorted(scan.reading_deg, fit.window.reading_deg)
-    expected = fit.maximum.expected
-    counts = fit.window.counts
-    for i, index in enumerate(where):
-        missing = expected[i] - counts[i]
-        if missing > 0 and missing**2 / expected[i] > DROPOUT_DEVIANCE and counts[i] < 0.3 * (
-            expected[i]
-        ):
-            drop[index] = True
-    return drop if int(drop.sum()) <= 2 else np.zeros_like(drop)
-
-
 def _refusal(scan: Scan, reason: str) -> Cutoff:
     nan = np.full(scan.reading_deg.size, math.nan)
     curve = FittedCurve(
@@ -401,7 +142,7 @@ def _refusal(scan: Scan, reason: str) -> Cutoff:
     )
 
 
-def _cutoff(run: Run, scale: AngleScale, edge: _Edge, answers: dict[str, float]) -> Cutoff:
+def _cutoff(run: Run, scale: AngleScale, edge: Edge, answers: dict[str, float]) -> Cutoff:
     scan, given = edge.scan, edge.given
     members = tuple(windows(scan, edge.points, edge.fit.reading_deg, given, edge.obstacles))
     family = fit_family(members, edge.fit, given)
@@ -461,7 +202,7 @@ def _cutoff(run: Run, scale: AngleScale, edge: _Edge, answers: dict[str, float])
     )
 
 
-def _fixed_window(scan: Scan, edge: _Edge) -> EdgeFit | None:
+def _fixed_window(scan: Scan, edge: Edge) -> EdgeFit | None:
     """The fit of a window that the user fixed."""
     if scan.fit_from_deg is None and scan.fit_to_deg is None:
         return None
