@@ -97,7 +97,7 @@ def insignificant(fit: EdgeFit) -> str:
 
 
 def dropouts(scan: Scan, fit: EdgeFit) -> NDArray[np.bool_]:
-    """Mark the isolated readings far below both fit and neighbours (a counter that missed a step)."""
+    """Mark isolated readings far below fit and neighbours: the counter missed a step."""
     drop = np.zeros(scan.reading_deg.size, dtype=bool)
     where = np.searchsorted(scan.reading_deg, fit.window.reading_deg)
     expected = fit.maximum.expected
