@@ -31,9 +31,9 @@ class TestConstants:
         )
 
     def test_electron_radius(self):
-        """CODATA 2022 as carried by scipy."""
+        """CODATA 2018 and 2022, as older and newer scipy carry them, differ by 2e-9."""
         radius_pm = codata.physical_constants["classical electron radius"][0] * 1e12
-        assert pytest.approx(radius_pm, rel=1e-9) == constants.CLASSICAL_ELECTRON_RADIUS_PM
+        assert pytest.approx(radius_pm, rel=5e-9) == constants.CLASSICAL_ELECTRON_RADIUS_PM
 
 
 # Computed for these checks from the exact constants (no publication behind it), pm.
