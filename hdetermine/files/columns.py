@@ -7,13 +7,10 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 
 from hdetermine.errors import InputError
-from hdetermine.files.headers import Meaning, Role, meaning_of, normalise
+from hdetermine.files.headers import ABSCISSA_ROLES, ORDINATE_ROLES, Meaning, meaning_of, normalise
 from hdetermine.files.plaintext import quoted
 from hdetermine.files.sheetmodel import ScanPart
 from hdetermine.files.tables import Column, Table
-
-_ANGLES: tuple[Role, ...] = ("theta", "two_theta", "angle", "wavelength")
-_ORDINATES: tuple[Role, ...] = ("counts", "rate", "intensity")
 
 
 @dataclass(frozen=True, slots=True)
@@ -28,8 +25,6 @@ class Choice:
         Counting times, if the table has them.
     kind : str
         ``"theta"``, ``"two_theta"`` or ``"wavelength"``.
-    kind_is_sure : bool
-        False if the header says "angle" and nothing else.
     unit : str
         Unit of the abscissa; empty if not named.
     ordinate_kind : str
@@ -42,7 +37,6 @@ class Choice:
     ordinate: Column
     dwell: Column | None
     kind: str
-    kind_is_sure: bool
     unit: str
     ordinate_kind: str
     remarks: tuple[str, ...]
@@ -80,22 +74,25 @@ def choose_columns(table: Table, entry: ScanPart, sheet: str) -> Choice:
     found = meanings[abscissa.number]
     remarks: list[str] = []
     kind: str = entry.abscissa or found.role
-    if entry.abscissa and found.role in _ANGLES and found.role not in (entry.abscissa, "angle"):
+    if (
+        entry.abscissa
+        and found.role in ABSCISSA_ROLES
+        and found.role not in (entry.abscissa, "angle")
+    ):
         remarks.append(
             f"column {quoted(abscissa.header)} is read as {entry.abscissa}, as the run sheet says"
         )
-    sure = kind != "angle"
     if kind == "angle":
         kind = "theta"
         remarks.append(f"column {quoted(abscissa.header)} is taken for the glancing angle")
-    elif kind not in _ANGLES:
+    elif kind not in ABSCISSA_ROLES:
         raise InputError(
             f"{table.where}: column {quoted(abscissa.header or str(abscissa.number))} does not say "
             'what it holds; state abscissa = "theta", "two_theta" or "wavelength" for this scan '
             f"in {sheet}."
         )
     spoken = meanings[ordinate.number].role
-    ordinate_kind = entry.ordinate or (spoken if spoken in _ORDINATES else "intensity")
+    ordinate_kind = entry.ordinate or (spoken if spoken in ORDINATE_ROLES else "intensity")
     if entry.ordinate and spoken in ("counts", "rate") and spoken != entry.ordinate:
         remarks.append(
             f"column {quoted(ordinate.header)} is read as {entry.ordinate}, as the run sheet says"
@@ -105,7 +102,6 @@ def choose_columns(table: Table, entry: ScanPart, sheet: str) -> Choice:
         ordinate=ordinate,
         dwell=dwells[0] if len(dwells) == 1 else None,
         kind=kind,
-        kind_is_sure=sure,
         unit=entry.abscissa_unit or found.unit,
         ordinate_kind=ordinate_kind,
         remarks=tuple(remarks),
@@ -115,7 +111,7 @@ def choose_columns(table: Table, entry: ScanPart, sheet: str) -> Choice:
 def _abscissa(table: Table, entry: ScanPart, meanings: dict[int, Meaning], sheet: str) -> Column:
     if entry.abscissa_column is not None:
         return _named(table, entry.abscissa_column, "abscissa_column", sheet)
-    candidates = [c for c in table.columns if meanings[c.number].role in _ANGLES]
+    candidates = [c for c in table.columns if meanings[c.number].role in ABSCISSA_ROLES]
     wanted = entry.abscissa or "theta"
     for role in (wanted, "angle" if wanted != "wavelength" else wanted):
         exact = [c for c in candidates if meanings[c.number].role == role]
@@ -154,7 +150,7 @@ def _ordinate(
             )
         return column
     rest = [c for c in table.columns if c is not abscissa]
-    candidates = [c for c in rest if meanings[c.number].role in _ORDINATES]
+    candidates = [c for c in rest if meanings[c.number].role in ORDINATE_ROLES]
     fitting = [c for c in candidates if meanings[c.number].voltage_kV == entry.tube_voltage_kV]
     if len(candidates) > 1 and fitting:
         candidates = fitting

@@ -137,7 +137,7 @@ def meaning_of(header: str) -> Meaning:
     if _SPREAD.search(text):
         return Meaning("other")
     unit = next((name for name, pattern in _UNITS if pattern.search(text)), "")
-    for role, pattern in _ABSCISSAE:
+    for role, pattern in _ABSCISSAE.items():
         if pattern.search(text):
             return Meaning(role, unit)
     if _DWELL.search(text):
@@ -151,9 +151,15 @@ def meaning_of(header: str) -> Meaning:
     return Meaning("other")
 
 
-_ABSCISSAE: tuple[tuple[Role, re.Pattern[str]], ...] = (
-    ("two_theta", _TWO_THETA),
-    ("theta", _THETA),
-    ("wavelength", _WAVELENGTH),
-    ("angle", _ANGLE),
-)
+_ABSCISSAE: dict[Role, re.Pattern[str]] = {
+    "two_theta": _TWO_THETA,
+    "theta": _THETA,
+    "wavelength": _WAVELENGTH,
+    "angle": _ANGLE,
+}
+
+ABSCISSA_ROLES: tuple[Role, ...] = ("theta", "angle", "two_theta", "wavelength")
+"""Roles that make an abscissa, the most welcome first."""
+
+ORDINATE_ROLES: tuple[Role, ...] = ("counts", "rate", "intensity")
+"""Roles that make an ordinate."""

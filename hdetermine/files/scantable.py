@@ -29,15 +29,13 @@ _DWELLS_S = (1e-3, 1e6)
 class Points:
     """Points of a scan as read from a table; arrays share the shape (n,).
 
-    `kind_is_sure` is False if the abscissa was taken for the glancing angle because its header
-    says "angle" and nothing more. `rate_rounding` is as in `Scan`.
+    `rate_rounding` is as in `Scan`.
     """
 
     reading_deg: FloatArray
     counts: IntArray
     dwell_s: FloatArray
     rate_rounding: float | None
-    kind_is_sure: bool
     remarks: tuple[str, ...]
 
 
@@ -86,9 +84,7 @@ def read_points(table: Table, entry: ScanPart, spacing_pm: float, sheet: str) ->
         remarks.append("the scan runs from large to small angles; its order was reversed")
     keep, notes = without_dropouts(reading, counts)
     remarks += notes
-    return Points(
-        reading[keep], counts[keep], dwell[keep], rounding, choice.kind_is_sure, tuple(remarks)
-    )
+    return Points(reading[keep], counts[keep], dwell[keep], rounding, tuple(remarks))
 
 
 def _filled_rows(table: Table, choice: Choice) -> list[int]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from typing import Any
 
 from pydantic import ValidationError
@@ -11,6 +12,9 @@ from hdetermine.files.limits import MAX_SCANS
 from hdetermine.files.plaintext import plain_text, quoted
 from hdetermine.files.quantities import nearest
 from hdetermine.files.sheetmodel import RunSheet, ScanPart
+
+PLACEHOLDER = "?"
+"""What stands in a drafted run sheet where its owner has to fill something in."""
 
 
 def check_sheet(content: dict[str, Any], where: str) -> RunSheet:
@@ -36,6 +40,11 @@ def check_sheet(content: dict[str, Any], where: str) -> RunSheet:
     if version != 1 or isinstance(version, bool):
         found = "nothing" if version is None else quoted(version)
         raise InputError(f"{where}: key schema: found {found}; allowed is schema = 1.")
+    unfilled = next(_unfilled(content, ""), None)
+    if unfilled is not None:
+        raise InputError(
+            f'{where}: key {unfilled}: it still says "?"; put the true value in its place.'
+        )
     scans = content.get("scan")
     if not isinstance(scans, list) or not scans:
         raise InputError(
@@ -50,6 +59,19 @@ def check_sheet(content: dict[str, Any], where: str) -> RunSheet:
         return RunSheet.model_validate(content)
     except ValidationError as error:
         raise InputError(_sentence(error, where)) from None
+
+
+def _unfilled(value: object, key: str) -> Iterator[str]:
+    """Keys that a drafted run sheet leaves to its owner."""
+    if value == PLACEHOLDER:
+        yield key
+    elif isinstance(value, dict):
+        for name, inner in value.items():
+            shown = plain_text(str(name)[:80])
+            yield from _unfilled(inner, f"{key}.{shown}" if key else shown)
+    elif isinstance(value, list):
+        for number, inner in enumerate(value, start=1):
+            yield from _unfilled(inner, f"{key}[{number}]")
 
 
 def _sentence(error: ValidationError, where: str) -> str:

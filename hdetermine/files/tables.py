@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import datetime
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 
 from hdetermine.errors import InputError
@@ -104,12 +104,11 @@ def read_table(data: bytes, where: str, sheet: str | None = None) -> Table:
     InputError
         In one sentence that names the file, the place and the remedy.
     """
-    if data.startswith(b"PK\x03\x04"):
+    if _is_archive(data):
         from hdetermine.files.spreadsheet import choose_sheet, read_sheets
 
         sheets = read_sheets(data, where)
-        with_data = [name for name, rows in sheets.items() if _first_data_row(rows) is not None]
-        name = choose_sheet(sheets, with_data, sheet, where)
+        name = choose_sheet(sheets, _with_data(sheets), sheet, where)
         return _from_grid(sheets[name], f"{where}, sheet {quoted(name)}")
     if sheet is not None:
         raise InputError(
@@ -117,6 +116,31 @@ def read_table(data: bytes, where: str, sheet: str | None = None) -> Table:
             "out of the run sheet."
         )
     return _from_text(split_lines(decode(data, where), where), where)
+
+
+def read_tables(data: bytes, where: str) -> dict[str, Table]:
+    """Read every table of a file, by the name of its sheet (empty for a text file).
+
+    Arguments and errors as in `read_table`.
+    """
+    if not _is_archive(data):
+        return {"": read_table(data, where)}
+    from hdetermine.files.spreadsheet import read_sheets
+
+    sheets = read_sheets(data, where)
+    return {
+        name: _from_grid(sheets[name], f"{where}, sheet {quoted(name)}")
+        for name in _with_data(sheets)
+    }
+
+
+def _is_archive(data: bytes) -> bool:
+    return data.startswith(b"PK\x03\x04")
+
+
+def _with_data(sheets: Mapping[str, Sequence[Sequence[Cell]]]) -> list[str]:
+    """Names of the sheets that have rows of numbers."""
+    return [name for name, rows in sheets.items() if _first_data_row(rows) is not None]
 
 
 def _from_text(lines: TextLines, where: str) -> Table:
@@ -218,7 +242,7 @@ def _is_number(cell: Cell) -> bool:
     return isinstance(cell, float | int) and not isinstance(cell, bool)
 
 
-def _first_data_row(rows: list[list[Cell]]) -> int | None:
+def _first_data_row(rows: Sequence[Sequence[Cell]]) -> int | None:
     """Index of the first row with two numbers or more and nothing else."""
     for index, row in enumerate(rows):
         filled = [cell for cell in row if cell is not None]
