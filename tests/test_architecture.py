@@ -21,7 +21,9 @@ MODULES = sorted(PACKAGE.rglob("*.py"))
 WRITERS = ("files.atomic", "files.cells", "files.resultfile", "files.modelrecord")
 
 # Propagation by draws: it judges the budget's linear route, and so comes after it.
-SAMPLERS = ("inference.montecarlo", "inference.posterior", "inference.spread")
+SAMPLERS = tuple(
+    f"inference.{name}" for name in ("chain", "density", "montecarlo", "posterior", "spread")
+)
 
 # Who may import whom, longest prefix first; a package may always import itself, `errors` and
 # the package's version. The path of the data is records, physics -> files -> inference ->
@@ -57,7 +59,7 @@ NETWORK = {
     "ftplib", "smtplib", "socketserver", "xmlrpc", "webbrowser", "asyncio",
 }  # fmt: skip
 CLOCK = {"datetime.now", "datetime.today", "datetime.utcnow", "date.today", "time.time"}
-SEEDED = {"Generator", "SeedSequence", "default_rng", "PCG64", "RandomState", "BitGenerator"}
+SEEDED = {"Generator", "SeedSequence", "default_rng", "PCG64", "MT19937", "BitGenerator"}
 
 
 def name_of(path: Path) -> str:
