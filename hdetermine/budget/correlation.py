@@ -108,6 +108,9 @@ def correlated_groups(correlation: FloatArray) -> list[list[int]]:
 
 
 def square_root(matrix: FloatArray) -> FloatArray:
-    """Return L with L L^T = matrix, for a positive semi-definite matrix."""
+    """Return the symmetric L with L L = matrix, for a positive semi-definite matrix.
+
+    Inputs without correlations keep a column of their own.
+    """
     values, vectors = np.linalg.eigh(matrix)
-    return np.asarray(vectors * np.sqrt(np.clip(values, 0.0, None)))
+    return np.asarray((vectors * np.sqrt(np.clip(values, 0.0, None))) @ vectors.T)
