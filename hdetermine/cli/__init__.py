@@ -17,6 +17,7 @@ COMMANDS: dict[str, tuple[str, str]] = {
     "analyse": ("hdetermine.cli.analyse", "Turn a folder of counts into h and a report."),
     "budget": ("hdetermine.cli.budget", "Print, write and probe the uncertainty budget."),
     "check": ("hdetermine.cli.check", "Check a class: data, claims and likely slips."),
+    "demo": ("hdetermine.cli.demo", "Copy a simulated demo run to try things on."),
     "draft": ("hdetermine.cli.draft", "Write a run sheet from what a folder holds."),
     "schema": ("hdetermine.cli.schema", "Print the JSON Schema of result.json."),
     "simulate": ("hdetermine.cli.simulate", "Make a run whose truth is known."),
