@@ -50,7 +50,9 @@ DARK: dict[str, str] = {
 WIDTH = 420.0
 """Width of a figure, points; two stand side by side on a wide page, one on a narrow one."""
 
-STYLE: dict[str, Any] = {
+# Any: the key types of matplotlib's settings differ from one of its versions to the next.
+STYLE: Any = {
+    "text.parse_math": False,
     "svg.fonttype": "none",
     "svg.hashsalt": "hdetermine",
     "font.family": ["DejaVu Sans"],

@@ -24,7 +24,15 @@ FONT = "DejaVu Sans, Verdana, sans-serif"
 NAME_OF_COLOUR = {colour: name for name, colour in LIGHT.items()}
 PLAIN_NUMBER = re.compile(r"-?\d+\.\d+(?:e-?\d+)?")
 REFERENCE = re.compile(r"url\(#([^)]+)\)")
-INHERITED = ("fill", "stroke", "stroke-width", "class", "clip-path", "fill-opacity", "stroke-opacity")
+INHERITED = (
+    "fill",
+    "stroke",
+    "stroke-width",
+    "class",
+    "clip-path",
+    "fill-opacity",
+    "stroke-opacity",
+)
 DEFAULTS = {"stroke-linejoin": "round", "stroke-dashoffset": "0", "text-anchor": "start"}
 
 

@@ -1,0 +1,61 @@
+"""The angle scale: what the characteristic lines say about it."""
+
+from __future__ import annotations
+
+from hdetermine.records.results import AngleScale
+from hdetermine.report.figure_style import BLUE, INK, MUTED, canvas, few_ticks
+from hdetermine.report.figure_svg import Picture, picture
+from hdetermine.report.plaintext import plain
+
+_MARKERS = ("o", "s", "D", "^", "v", "P", "X", "<", ">")
+
+
+def lines_picture(scale: AngleScale) -> Picture | None:
+    """Draw the residual of every characteristic line against its place.
+
+    Returns
+    -------
+    Picture or None
+        None without lines.
+    """
+    if not scale.lines:
+        return None
+    labels = list(dict.fromkeys((line.label, line.order) for line in scale.lines))
+    legend = 15.0 * (1 + len(labels) // 2)
+    figure = canvas(235.0 + legend, bottom=43.0 + legend)
+    axes = figure.subplots()
+    axes.axhline(0.0, color=BLUE, linewidth=1.2)
+    for i, (label, order) in enumerate(labels):
+        marker = _MARKERS[i % len(_MARKERS)]
+        for used in (True, False):
+            lines = [
+                line
+                for line in scale.lines
+                if (line.label, line.order, line.used) == (label, order, used)
+            ]
+            if not lines:
+                continue
+            name = plain(label, 30) if order == 1 else f"{plain(label, 30)}, order {order}"
+            axes.errorbar(
+                [line.reading_deg for line in lines], [line.residual_deg for line in lines],
+                yerr=[line.reading_u_deg for line in lines], fmt=marker, color=INK, ecolor=MUTED,
+                elinewidth=1.0, capsize=2.5, markersize=5.5,
+                markerfacecolor=INK if used else "none",
+                label=name if used else f"{name} (not used)",
+            )  # fmt: skip
+    few_ticks(axes)
+    axes.set_xlabel("reading of the line / °")
+    axes.set_ylabel("reading − expectation / °")
+    handles, names = axes.get_legend_handles_labels()
+    figure.legend(handles, names, loc="lower left", ncols=2, bbox_to_anchor=(0.02, 0.005))
+    taken = [line for line in scale.lines if line.used]
+    worst = max((abs(line.residual_deg) for line in taken), default=0.0)
+    alt = (
+        f"Residuals of {len(scale.lines)} characteristic lines, {len(taken)} of them used, "
+        f"against their reading. The largest residual of a used line is {worst:.4f} degrees."
+    )
+    caption = (
+        "Reading of each characteristic line minus its expectation on the fitted angle scale, "
+        "with standard uncertainties; each marker is a line, hollow ones were not used."
+    )
+    return picture(figure, "lines", alt, caption)
