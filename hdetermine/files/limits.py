@@ -25,6 +25,9 @@ MAX_SHEETS = 100
 MAX_LINE_CHARACTERS = 20_000
 """Length of one line of a text file."""
 
+MAX_RESULT_BYTES = 64_000_000
+"""Size of a result file that the budget is worked out from again, bytes."""
+
 MAX_ROWS = 100_000
 """Rows of a table."""
 

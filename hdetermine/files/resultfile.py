@@ -18,6 +18,7 @@ import numpy as np
 
 from hdetermine.errors import InputError
 from hdetermine.files.cells import csv_bytes
+from hdetermine.files.limits import MAX_RESULT_BYTES
 from hdetermine.files.modelrecord import model_document, model_from
 from hdetermine.records.results import (
     AngleScale,
@@ -31,7 +32,6 @@ from hdetermine.records.results import (
 
 SCHEMA = "hdetermine-result/1"
 ROUTES = ("linear", "monte_carlo", "posterior")
-MAX_RESULT_BYTES = 64_000_000
 
 
 def result_document(determination: Determination) -> dict[str, Any]:
