@@ -219,7 +219,7 @@ def test_groups_and_families():
     assert groups["scan.v1.counting_deg"] == "counting statistics"
     assert not any("." in group for group in groups.values())
     assert group_of("something.else") == "something.else"
-    assert {scan_family(row) for row in planck_budget(model).rows if not row.common} == {
+    assert {scan_family(row.quantity) for row in planck_budget(model).rows if not row.common} == {
         "scan.*.counting_deg",
         "scan.*.window_deg",
         "scan.*.background_deg",

@@ -14,7 +14,7 @@ from hdetermine.budget.coverage import coverage_factor, effective_degrees_of_fre
 from hdetermine.budget.propagation import linear_budget
 from hdetermine.inference import measurement
 from hdetermine.inference.weights import planck_gradient
-from hdetermine.records.results import Budget, BudgetRow, MeasurementModel
+from hdetermine.records.results import Budget, MeasurementModel
 
 GROUPS: Mapping[str, str] = {
     measurement.GAIN: "voltage gain",
@@ -138,8 +138,6 @@ def limiting_sentence(budget: Budget) -> str:
     )
 
 
-def scan_family(row: BudgetRow) -> str:
+def scan_family(name: str) -> str:
     """Name that the same input of every scan shares, ``scan.*.counting_deg``; else its own."""
-    if row.quantity.startswith("scan."):
-        return f"scan.*.{row.quantity.rpartition('.')[2]}"
-    return row.quantity
+    return f"scan.*.{name.rpartition('.')[2]}" if name.startswith("scan.") else name

@@ -114,8 +114,8 @@ def run_chain(
     dimensions = density.dimensions
     walkers = max(walkers, 4 * dimensions)
     walkers += walkers % 2
-    start_seed = np.random.default_rng(np.random.SeedSequence((seed.entropy, *seed.spawn_key, 1)))
-    start = density.mean + start_seed.standard_normal((walkers, dimensions)) @ (
+    generator = np.random.default_rng(seed.generate_state(4).tolist())
+    start = density.mean + generator.standard_normal((walkers, dimensions)) @ (
         density.covariance_root.T
     )
     # The chain has its own generator; a seeded start alone would leave it to the global one.

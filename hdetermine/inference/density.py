@@ -22,7 +22,8 @@ from hdetermine.budget.correlation import square_root
 from hdetermine.budget.distributions import from_normal
 from hdetermine.budget.planck import linear_figures
 from hdetermine.inference import measurement
-from hdetermine.inference.weights import log_sensitivities, planck_gradient
+from hdetermine.inference.spread import cutoff_sides
+from hdetermine.inference.weights import log_per_degree, log_sensitivities, planck_gradient
 from hdetermine.records.results import MeasurementModel
 
 FloatArray = NDArray[np.float64]
@@ -118,17 +119,17 @@ def posterior_density(model: MeasurementModel) -> PosteriorDensity:
     """
     u = np.array([quantity.standard_uncertainty for quantity in model.inputs])
     names = [quantity.name for quantity in model.inputs]
-    counting = [names.index(measurement.counting_name(scan)) for scan in model.scans]
+    counting = {measurement.counting_name(scan) for scan in model.scans}
     alone = np.count_nonzero(model.correlation, axis=1) == 1
-    free = [i for i in range(len(names)) if u[i] > 0.0 and i not in counting]
+    free = [i for i in range(len(names)) if u[i] > 0.0 and names[i] not in counting]
     integrated = [i for i in free if alone[i] and not model.inputs[i].common]
     sampled = [i for i in free if i not in integrated]
 
     logarithmic = log_sensitivities(model, model.reading_deg)
-    per_degree = logarithmic[np.arange(len(counting)), counting]
+    per_degree = log_per_degree(model, model.reading_deg)
     as_reading = logarithmic / per_degree[:, np.newaxis] * u
-    sides = np.where(u[counting][:, np.newaxis] > 0.0, model.skew, 0.0)
-    variances = sides**2 + np.sum(as_reading[:, integrated] ** 2, axis=1)[:, np.newaxis]
+    own = np.sum(as_reading[:, integrated] ** 2, axis=1)
+    variances = cutoff_sides(model) ** 2 + own[:, np.newaxis]
     if not np.all(variances > 0.0):
         raise ValueError("every cutoff needs a width")
 
@@ -138,7 +139,7 @@ def posterior_density(model: MeasurementModel) -> PosteriorDensity:
     # The prediction follows the mean that the inputs give, and each cutoff its own value.
     of_mean = planck_gradient(model)[sampled] * u[sampled] / figures.value_J_s
     of_inputs = of_mean / per_degree[:, np.newaxis] - as_reading[:, sampled]
-    slopes = np.column_stack([np.full(len(counting), relative) / per_degree, of_inputs @ root])
+    slopes = np.column_stack([np.full(len(model.scans), relative) / per_degree, of_inputs @ root])
     mean_variance = variances.mean(axis=1)
     precision = slopes.T @ (slopes / mean_variance[:, np.newaxis])
     precision[1:, 1:] += np.eye(len(sampled))

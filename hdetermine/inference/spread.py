@@ -62,6 +62,19 @@ def split_normal(lower: float, upper: float, rng: np.random.Generator, draws: in
     return np.asarray(np.where(above, upper * size, -lower * size))
 
 
+def cutoff_sides(model: MeasurementModel) -> FloatArray:
+    """Lower and upper standard deviation of each cutoff from its counts, degrees, shape (n, 2).
+
+    The two sides of the likelihood where both are known; else the standard uncertainty of the
+    counting input on both sides; zero where that input has none.
+    """
+    u = {quantity.name: quantity.standard_uncertainty for quantity in model.inputs}
+    counting = np.array([u.get(measurement.counting_name(scan), 0.0) for scan in model.scans])
+    known = np.all(np.isfinite(model.skew) & (model.skew > 0.0), axis=1) & (counting > 0.0)
+    even = np.repeat(counting[:, np.newaxis], 2, axis=1)
+    return np.asarray(np.where(known[:, np.newaxis], model.skew, even))
+
+
 def draw_inputs(model: MeasurementModel, rng: np.random.Generator, draws: int) -> FloatArray:
     """Draw all inputs of h, shape (m, draws).
 
@@ -70,11 +83,9 @@ def draw_inputs(model: MeasurementModel, rng: np.random.Generator, draws: int) -
     """
     index = {quantity.name: i for i, quantity in enumerate(model.inputs)}
     values = draw(model.inputs, model.correlation, rng, draws)
-    for scan, (lower, upper) in zip(model.scans, model.skew, strict=True):
-        row = index[measurement.counting_name(scan)]
-        alone = np.count_nonzero(model.correlation[row]) == 1
-        known = math.isfinite(lower + upper) and lower > 0.0 and upper > 0.0
-        if alone and known and model.inputs[row].standard_uncertainty > 0.0:
+    for scan, (lower, upper) in zip(model.scans, cutoff_sides(model), strict=True):
+        row = index.get(measurement.counting_name(scan))
+        if row is not None and lower != upper and np.count_nonzero(model.correlation[row]) == 1:
             values[row] = model.inputs[row].value + split_normal(lower, upper, rng, draws)
     return values
 

@@ -41,6 +41,12 @@ def single_planck_J_s(model: MeasurementModel) -> FloatArray:
     return np.asarray(product * PLANCK_PER_SLOPE)
 
 
+def log_per_degree(model: MeasurementModel, reading_deg: FloatArray) -> FloatArray:
+    """Change of ln h_i per degree of the cutoff's reading, shape (n,)."""
+    zero = next(q.value for q in model.inputs if q.name == measurement.ZERO)
+    return np.asarray(np.pi / 180.0 / np.tan(np.radians(reading_deg - zero)))
+
+
 def log_sensitivities(model: MeasurementModel, reading_deg: FloatArray) -> FloatArray:
     """Derivatives of ln h_i by every input, at given readings of the cutoffs.
 
@@ -67,7 +73,7 @@ def log_sensitivities(model: MeasurementModel, reading_deg: FloatArray) -> Float
     peak = supplied * swing + value[measurement.WORK_FUNCTION] * 1e-3
     warmth = value[measurement.TEMPERATURE] - model.reference_temperature_C
     stretch = 1.0 + value[measurement.EXPANSION] * warmth
-    per_degree = np.pi / 180.0 / np.tan(np.radians(reading_deg - value[measurement.ZERO]))
+    per_degree = log_per_degree(model, reading_deg)
 
     result = per_degree[:, np.newaxis] * model.responses_deg
     result[:, index[measurement.ZERO]] -= per_degree
