@@ -111,7 +111,7 @@ def parse_supposition(text: str, model: MeasurementModel) -> Supposition:
 
 def _nearest(name: str, known: dict[str, tuple[str, ...]]) -> str:
     close = difflib.get_close_matches(name, known, n=1, cutoff=0.3)
-    return f"; the nearest is {close[0]}" if close else f"; there are {', '.join(known)}"
+    return f"; the nearest is {close[0]}" if close else "; the budget lists their names"
 
 
 def suppose(model: MeasurementModel, suppositions: Sequence[Supposition]) -> MeasurementModel:

@@ -85,7 +85,7 @@ def draw_inputs(model: MeasurementModel, rng: np.random.Generator, draws: int) -
     values = draw(model.inputs, model.correlation, rng, draws)
     for scan, (lower, upper) in zip(model.scans, cutoff_sides(model), strict=True):
         row = index.get(measurement.counting_name(scan))
-        if row is not None and lower != upper and np.count_nonzero(model.correlation[row]) == 1:
+        if row is not None and lower > 0.0 and np.count_nonzero(model.correlation[row]) == 1:
             values[row] = model.inputs[row].value + split_normal(lower, upper, rng, draws)
     return values
 
