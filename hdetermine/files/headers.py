@@ -44,7 +44,7 @@ _TWO_THETA = re.compile(
     r"(?<!\d)2\s*[*·x]?\s*(?:θ|theta\b|th\b|β|beta\b)|two\s*theta|double\s+angle"
     r"|(?:counter|detector|scattering|deflection)\s+angle"
     r"|(?:detektor|streu|ablenk|zahlrohr|zaehlrohr)winkel"
-    r"|angle\s+de\s+(?:diffusion|deviation)|angulo\s+de\s+(?:dispersion|desviacion|desvio)"
+    r"|angle\s+de\s+(?:diffusion|deviation)|angulo\s+de\s+(?:dispersion|dispersao|desviacion|desvio|espalhamento)"
 )
 _THETA = re.compile(
     r"θ|\btheta\b|\bth\b|glancing|\bbragg|glanzwinkel|braggwinkel|kristallwinkel|crystal\s+angle"

@@ -24,7 +24,7 @@ _BOUNDED: dict[str, Distribution] = {
     "triangular": "triangular",
     "arcsine": "arcsine",
 }
-_SUPPORT_IN_U = 5.0
+_SUPPORT_IN_U = 3.0
 """How far a normal distribution is taken to reach, in standard uncertainties."""
 
 
@@ -210,7 +210,7 @@ def settle(rule: InputRule, stated: StatedQuantity | None, where: str) -> Quanti
 def _check_support(rule: InputRule, stated: StatedQuantity, where: str) -> None:
     """Refuse a distribution that reaches where the model is undefined.
 
-    A normal or t distribution has no ends; it is held against the limits at five standard
+    A normal or t distribution has no ends; it is held against the limits at three standard
     uncertainties, and only where the estimate itself must stay off the limit.
     """
     assert stated.u is not None

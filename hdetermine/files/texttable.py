@@ -17,7 +17,6 @@ _COMMENTS = ("#", "%", "!", "//")
 _BLANKS = re.compile(r"[ \t\u00a0]+")
 _WIDE_BLANKS = re.compile(r"\t+| {2,}")
 _NUMBER_LINE = re.compile(r"[0-9.,;|'\"eE+\-\u2212°\s\u00a0\u202f\u2009]*$")
-_SAMPLE = 65_536
 _FAMILIES = {
     b"\x89PNG": "a picture",
     b"\xff\xd8\xff": "a picture",
@@ -83,7 +82,7 @@ def decode(data: bytes, where: str) -> str:
         )
     text = _decoded(data)
     strange = sum(unicodedata.category(c) == "Cc" and c not in "\t\n\r\f\v\x1a" for c in text)
-    if text is None or strange > 0.01 * len(text):
+    if text is None or strange > 0.05 * len(text):
         raise InputError(
             f"{where}: this is neither text nor a spreadsheet; export the counts as CSV or xlsx."
         )
@@ -105,18 +104,9 @@ def _decoded(data: bytes) -> str:
     try:
         return data.decode("utf-8")
     except UnicodeDecodeError:
-        return data.decode(_code_page(data), errors="replace")
-
-
-def _code_page(data: bytes) -> str:
-    from charset_normalizer import from_bytes
-
-    lines = [line for line in data.splitlines() if not line.isascii()]
-    guess = from_bytes(
-        b"\n".join(lines)[:_SAMPLE],
-        cp_isolation=["cp1252", "latin_1", "mac_roman", "cp850"],
-    ).best()
-    return guess.encoding if guess else "cp1252"
+        # Western code page, a superset of Latin-1. Numbers and separators are the same in all of
+        # them; another guess could only change a letter of a header.
+        return data.decode("cp1252", errors="replace")
 
 
 def split_lines(text: str, where: str) -> TextLines:
@@ -136,6 +126,11 @@ def split_lines(text: str, where: str) -> TextLines:
     if not candidates:
         raise InputError(f"{where}: {_no_numbers(text)}")
     separator = _separator([line for _, line in candidates])
+    if separator is None and all(looks_numeric(line) for _, line in candidates):
+        raise InputError(
+            f"{where}: it has only one column of numbers; a scan needs an angle and a count in "
+            "each row."
+        )
     if separator is None:
         raise InputError(
             f"{where}: no separator (tab, semicolon, comma or blanks) splits its lines into "
@@ -198,7 +193,7 @@ def _logical_lines(text: str, where: str) -> list[tuple[int, str]]:
         if len(line) > MAX_LINE_CHARACTERS:
             raise InputError(
                 f"{where}, line {number}: it has {len(line)} characters, more than the "
-                f"{MAX_LINE_CHARACTERS} that are read; is this a table?"
+                f"{MAX_LINE_CHARACTERS} that are read; export the table with one row a line."
             )
         if line.strip(" \t\f\v\u00a0\ufeff\0"):
             lines.append((number, line.strip("\f\v\ufeff\0")))
@@ -212,16 +207,19 @@ def _no_numbers(text: str) -> str:
 
 
 def _separator(lines: list[str]) -> str | None:
+    """The separator that splits lines into numbers, if one does.
+
+    A line without the separator says nothing; one that it splits into anything but numbers speaks
+    against it.
+    """
     for separator in ("\t", ";", "|", ",", " "):
-        good = 0
-        widths: Counter[int] = Counter()
+        good = bad = 0
         for line in lines:
-            cells = _cells(line, separator)
-            filled = [cell for cell in cells if cell]
-            if len(cells) > 1 and filled and all(looks_numeric(cell) for cell in filled):
-                good += 1
-                widths[len(cells)] += 1
-        if good >= 0.8 * len(lines) and max(widths.values(), default=0) >= 0.5 * len(lines):
+            cells = [cell for cell in _cells(line, separator) if cell]
+            if len(cells) > 1:
+                numeric = all(looks_numeric(cell) for cell in cells)
+                good, bad = good + numeric, bad + (not numeric)
+        if good >= 0.5 * len(lines) and bad <= 0.2 * good:
             return separator
     return None
 
