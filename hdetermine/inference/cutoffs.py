@@ -22,6 +22,7 @@ from hdetermine.inference.firstfit import Edge, first_fit, first_guesses
 from hdetermine.inference.resolution import common_resolution, resolution_answers
 from hdetermine.inference.spacing import crystal_spacing_pm
 from hdetermine.physics.bragg import wavelength_pm
+from hdetermine.records.quantity import Quantity
 from hdetermine.records.results import AngleScale, Cutoff, FittedCurve, WindowFit
 from hdetermine.records.run import Run
 from hdetermine.records.scan import Scan
@@ -89,7 +90,7 @@ def _settle_resolution(
             (answers.get(quantity.name, 0.0) * quantity.standard_uncertainty) ** 2
             for quantity in (*run.apparatus.quantities(), scale.kernel)
         )
-        u = math.sqrt(free.standard_uncertainty**2 + spread)
+        u = math.hypot(_likelihood_u(fits, refitted, free, stated), math.sqrt(spread))
         pull = (free.value - stated.value) / math.hypot(u, stated.standard_uncertainty)
         scale = replace(
             scale, edge_resolution_deg=free.value, edge_resolution_u_deg=u, edge_pull=pull
@@ -120,6 +121,19 @@ def _settle_resolution(
         for (name, edge), fit in zip(edges.items(), refitted, strict=True)
     }
     return scale, moved, answers
+
+
+def _likelihood_u(
+    held: tuple[EdgeFit, ...], free: tuple[EdgeFit, ...], found: Quantity, stated: Quantity
+) -> float:
+    """Uncertainty of the edges' own width: not below what the fall of the deviance supports."""
+    fall = sum(
+        before.maximum.deviance + before.maximum.penalty
+        - after.maximum.deviance - after.maximum.penalty
+        for before, after in zip(held, free, strict=True)
+    )  # fmt: skip
+    supported = abs(found.value - stated.value) / math.sqrt(max(fall, 1e-6))
+    return max(found.standard_uncertainty, supported)
 
 
 def _refusal(scan: Scan, reason: str) -> Cutoff:

@@ -25,7 +25,7 @@ from hdetermine.records.scan import Scan
 FloatArray = NDArray[np.float64]
 
 _SPANS = (0.12, 0.2, 0.3, 0.45)  # upper end: wavelength beyond the cutoff, relative
-_LONG_SPAN = 0.18  # from here on a second smooth term is tried
+_LONG_SPAN = 0.16  # from here on the smooth factor has a second term
 _DEPTHS_WIDTHS = (4.0, 9.0)  # lower end, in resolution widths below the cutoff
 _DEPTHS_STEPS = (8.0, 18.0)  # ... but at least so many steps
 LEAST_BELOW = 3
@@ -126,22 +126,21 @@ def windows(
             readings = scan.reading_deg[take]
             if not _enough(readings, edge_deg, width):
                 continue
-            for terms in (1, 2) if span > _LONG_SPAN else (1,):
-                for background in (1, 2):
-                    window = EdgeWindow(
-                        readings,
-                        scan.counts[take].astype(float),
-                        scan.dwell_s[take],
-                        terms,
-                        background,
-                        lines,
-                    )
-                    first_index = int(np.argmax(take))
-                    key = (first_index, readings.size, terms, background, len(lines))
-                    if key in seen or readings.size - window.parameters < _LEAST_FREEDOM:
-                        continue
-                    seen.add(key)
-                    yield window
+            terms = 2 if span > _LONG_SPAN else 1
+            for background in (1, 2):
+                window = EdgeWindow(
+                    readings,
+                    scan.counts[take].astype(float),
+                    scan.dwell_s[take],
+                    terms,
+                    background,
+                    lines,
+                )
+                key = (int(np.argmax(take)), readings.size, terms, background, len(lines))
+                if key in seen or readings.size - window.parameters < _LEAST_FREEDOM:
+                    continue
+                seen.add(key)
+                yield window
 
 
 def _enough(readings: FloatArray, edge_deg: float, width_deg: float) -> bool:

@@ -27,13 +27,13 @@ from hdetermine.records.apparatus import DeadTimeModel
 FloatArray = NDArray[np.float64]
 
 # Weak priors (standard deviations): the background changes by less than exp(3) from end to end
-# of the window; the smooth factor by less than exp(3 x), exp(6 x^2); a line stands within
-# 0.02 degrees of where the angle scale puts it. The background amplitude has the prior b^(-1/2)
-# of a Poisson rate, so that a background without counts stays defined.
+# of the window; the smooth factor by less than exp(10 x), exp(20 x^2); a line stands within
+# 0.02 degrees of where the angle scale puts it. The background amplitude b has the prior
+# b^(0.1 - 1): as good as flat in its logarithm, but a background without counts stays defined.
 _BACKGROUND_SLOPE_U = 1.5
-_SMOOTH_U = (3.0, 6.0)
+_SMOOTH_U = (10.0, 20.0)
 _LINE_SHIFT_U_DEG = 0.02
-_JEFFREYS = 0.5
+_BACKGROUND_POWER = 0.1
 
 
 @dataclass(frozen=True, slots=True)
@@ -254,8 +254,8 @@ def _prior(window: EdgeWindow, parameters: FloatArray) -> tuple[float, FloatArra
     for i in range(len(window.lines)):
         precision[start + window.background_terms + 2 * i + 1] = _LINE_SHIFT_U_DEG**-2
     gradient = precision * parameters
-    gradient[start] -= _JEFFREYS
-    penalty = float(np.sum(precision * parameters**2) - 2.0 * _JEFFREYS * parameters[start])
+    gradient[start] -= _BACKGROUND_POWER
+    penalty = float(np.sum(precision * parameters**2) - 2.0 * _BACKGROUND_POWER * parameters[start])
     return penalty, gradient, precision
 
 

@@ -24,6 +24,8 @@ from hdetermine.records.scan import Scan
 
 SIGNIFICANT = 8.0  # amplitude over its standard uncertainty
 REFERENCE_TOLERANCE = 3.0  # in standard uncertainties, between reference and edge scans
+FARTHEST_DEG = 0.35  # between the first look at a line and its fit
+WIDEST_DEG = 1.2
 EXCITED = 1.01  # an energy so little above the threshold excites nothing that can be seen
 
 
@@ -78,8 +80,8 @@ def find_lines(run: Run) -> tuple[FittedLine, ...]:
                 counter.dead_time_model,
             )
             if line.significance > SIGNIFICANT
-            and abs(line.shift_deg - zero) < line.fwhm_deg
-            and 1.5 * line.fwhm_deg > scan.step_deg
+            and abs(line.shift_deg - zero) < min(line.fwhm_deg, FARTHEST_DEG)
+            and scan.step_deg < 1.5 * line.fwhm_deg < 1.5 * WIDEST_DEG
         )
     return tuple(found)
 
