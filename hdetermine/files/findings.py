@@ -21,7 +21,7 @@ from hdetermine.files.numerals import decimals_of
 from hdetermine.files.plaintext import plain_text, quoted
 from hdetermine.files.runfolder import RunFolder
 from hdetermine.files.scantable import read_points
-from hdetermine.files.sheetmodel import ScanPart
+from hdetermine.files.sheetmodel import ScanPart, derived_name
 from hdetermine.files.tables import Column, Table, read_tables
 
 SUFFIXES = (".csv", ".tsv", ".txt", ".dat", ".asc", ".prn", ".xy", ".xlsx", ".ods")
@@ -33,6 +33,7 @@ _REMEDIES = {
     "decimal": ("point", "comma"),
     "abscissa_unit": ("deg", "rad", "pm", "nm", "angstrom"),
 }
+_SINGLED_OUT_BY = ("sheet", "column")
 _ANY_SPACING_PM = 3000.0
 _VOLTS_ALONE = re.compile(r"\d{1,2}(?:[.,]\d{1,2})?")
 
@@ -117,8 +118,21 @@ def look_through(folder: Path) -> Findings:
             words += [Path(name).stem, *table.titles]
             scans += _scans_of(name, sheet if len(tables) > 1 else None, table)
     check_limit(len(scans), MAX_SCANS, quoted(folder.name), "scans")
+    _tell_apart(scans)
     scans.sort(key=lambda scan: (_sort_key(scan.voltage_kV), scan.file))
     return Findings(tuple(scans), tuple(left_out), tuple(words))
+
+
+def _tell_apart(scans: list[FoundScan]) -> None:
+    """Give scans whose derived names are alike names of their own."""
+    nothing = Finding()
+    names = [
+        derived_name(scan.file, *(scan.settings.get(key, nothing).value for key in _SINGLED_OUT_BY))
+        for scan in scans
+    ]
+    for number, (scan, name) in enumerate(zip(scans, names, strict=True), start=1):
+        if names.count(name) > 1:
+            scan.settings["name"] = Finding(f"{name[:60]} ({number})", is_guess=False)
 
 
 def _candidates(folder: Path) -> list[str]:

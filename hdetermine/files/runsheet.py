@@ -24,7 +24,7 @@ from hdetermine.files.quantities import describe
 from hdetermine.files.runfolder import RunFolder
 from hdetermine.files.scantable import read_points
 from hdetermine.files.sheetcheck import check_sheet
-from hdetermine.files.sheetmodel import RunSheet, ScanPart, TableReading
+from hdetermine.files.sheetmodel import RunSheet, ScanPart, TableReading, derived_name
 from hdetermine.files.tables import Table, read_table
 from hdetermine.records.apparatus import Apparatus
 from hdetermine.records.run import Run, SheetEntry
@@ -175,7 +175,7 @@ def _read_scans(
     for number, raw in enumerate(sheet.scan, start=1):
         entry = _merged(raw, sheet.every_scan)
         key = f"scan[{number}]"
-        name = _scan_name(entry)
+        name = entry.name or derived_name(entry.file, entry.sheet, entry.column)
         if any(scan.name == name for scan in scans):
             raise InputError(
                 f"{where}: key {key}: two scans are called {quoted(name)}; give one of them a "
@@ -191,13 +191,6 @@ def _read_scans(
         check_limit(total, MAX_RUN_POINTS, where, "points in all its scans")
         scans.append(scan)
     return tuple(scans)
-
-
-def _scan_name(entry: ScanPart) -> str:
-    if entry.name is not None:
-        return entry.name
-    stem = plain_text(Path(entry.file.replace("\\", "/")).stem)
-    return stem if entry.column is None else f"{stem}:{plain_text(str(entry.column))}"
 
 
 def _scan(table: Table, entry: ScanPart, name: str, apparatus: Apparatus, where: str) -> Scan:

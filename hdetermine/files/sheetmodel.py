@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+from pathlib import Path
 from typing import Annotated, Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, PlainValidator
@@ -214,6 +215,12 @@ class ScanPart(TableReading):
     fit_from_deg: Angle = None
     fit_to_deg: Angle = None
     leave_out: Text = ""
+
+
+def derived_name(file: str, *within: str | float | None) -> str:
+    """Name of a scan that states none: the file's stem, then sheet and column if stated."""
+    stem = Path(file.replace("\\", "/")).stem
+    return plain_text(":".join([stem, *(str(part) for part in within if part is not None)]))
 
 
 class RunSheet(_Part):
