@@ -103,7 +103,7 @@ def test_sides_of_the_likelihood_follow_the_counting_uncertainty():
 @pytest.mark.parametrize(
     ("texts", "match"),
     [
-        (["tube.voltage.gian.u=0.1"], "no input 'tube.voltage.gian'; the nearest is tube.volt.*gain"),
+        (["tube.voltage.gian.u=0.1"], "no input 'tube.voltage.gian'; the nearest is .*gain"),
         (["scan.v9.counting_deg.u=1"], r"the nearest is scan\.v\d\.counting_deg"),
         (["zzz.u=1"], "no input 'zzz'; the budget lists their names"),
         (["tube.voltage.gain=0.1"], "does not say which figure of tube.voltage.gain"),
@@ -128,7 +128,7 @@ def test_bad_suppositions(texts, match):
 
 
 def test_improvements():
-    found = s.improvements(MODEL)
+    found = s.improvements(MODEL, each_scan=True)
     expanded = linear_figures(MODEL).expanded_uncertainty_J_s
     by_name = {entry.quantity: entry for entry in found}
     assert {q.name for q in MODEL.inputs if q.standard_uncertainty > 0} <= set(by_name)
@@ -144,6 +144,12 @@ def test_improvements():
     family = by_name["scan.*.counting_deg"]
     other = s.what_if(MODEL, ["scan.*.counting_deg.u=0"]).after
     assert family.expanded_if_zero == pytest.approx(other.expanded_uncertainty, rel=1e-9)
+
+
+def test_improvements_of_single_scans_only_if_asked_for():
+    found = {entry.quantity for entry in s.improvements(MODEL)}
+    assert "scan.*.counting_deg" in found
+    assert not any(name.startswith("scan.v") for name in found)
 
 
 def test_exact_inputs_cannot_improve():
@@ -168,7 +174,15 @@ def test_figures_without_rows_are_those_of_the_budget():
     assert quick.expanded_uncertainty_J_s == pytest.approx(full.expanded_uncertainty, rel=1e-9)
 
 
-def test_single_scan_has_no_families():
+def test_single_scan():
     model = make_model(1)
-    assert not any("*" in entry.quantity for entry in s.improvements(model))
     assert s.counting_floor(model) < linear_figures(model).expanded_uncertainty_J_s
+    assert "scan.*.counting_deg" in {entry.quantity for entry in s.improvements(model)}
+
+
+def test_study():
+    plain = s.study(MODEL)
+    assert plain.supposed is None
+    assert plain.improvements == s.improvements(MODEL)
+    supposed = s.study(MODEL, ["tube.voltage.gain.u=0.001"]).supposed
+    assert supposed.after.expanded_uncertainty < plain.budget.expanded_uncertainty

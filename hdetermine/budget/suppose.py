@@ -209,30 +209,34 @@ def _expanded(
 
 
 def improvements(
-    model: MeasurementModel, coverage_probability: float = 0.95
+    model: MeasurementModel, coverage_probability: float = 0.95, *, each_scan: bool = False
 ) -> tuple[Improvement, ...]:
     """Expanded uncertainty that would remain if an input were known twice as well, or exactly.
 
-    Every input with an uncertainty has an entry. Where several scans have the same kind of
-    input there is another entry for all of them together (``scan.*.counting_deg``). The weights
-    of the voltages are worked out anew each time.
+    Every input with an uncertainty has an entry; inputs of the same kind of all scans have one
+    together (``scan.*.counting_deg``). The weights of the voltages are worked out anew each
+    time.
 
     Parameters
     ----------
     model : MeasurementModel
     coverage_probability : float
+    each_scan : bool
+        Give the inputs of single scans an entry each as well.
 
     Returns
     -------
     tuple of Improvement
         Sorted, the largest gain first.
     """
+    together = families(model)
+    symbols = {scan_family(quantity.name): quantity.symbol for quantity in model.inputs}
     groups: dict[str, tuple[str, ...]] = {
-        quantity.name: (quantity.name,) for quantity in model.inputs
+        quantity.name: (quantity.name,)
+        for quantity in model.inputs
+        if each_scan or scan_family(quantity.name) == quantity.name
     }
-    symbols = {quantity.name: quantity.symbol for quantity in model.inputs}
-    if len(model.scans) > 1:
-        groups |= families(model)
+    groups |= together
     known = {quantity.name for quantity in model.inputs if quantity.standard_uncertainty > 0.0}
     entries = []
     for name, members in groups.items():
@@ -240,10 +244,41 @@ def improvements(
             continue
         halved = _expanded(model, members, 0.5, coverage_probability)
         zero = _expanded(model, members, 0.0, coverage_probability)
-        entries.append(Improvement(name, symbols.get(name, "all scans"), halved, zero))
+        entries.append(Improvement(name, symbols[scan_family(name)], halved, zero))
     return tuple(sorted(entries, key=lambda entry: entry.expanded_if_zero))
 
 
 def counting_floor(model: MeasurementModel, coverage_probability: float = 0.95) -> float:
     """Expanded uncertainty of h with perfect counting statistics, J s."""
     return _expanded(model, families(model).get(COUNTING_FAMILY, ()), 0.0, coverage_probability)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class BudgetStudy:
+    """A budget, what would improve it, and what was supposed.
+
+    `counting_floor` is the expanded uncertainty with perfect counting statistics.
+    """
+
+    budget: Budget
+    improvements: tuple[Improvement, ...]
+    counting_floor: float
+    supposed: WhatIf | None
+
+
+def study(model: MeasurementModel, texts: Sequence[str] = ()) -> BudgetStudy:
+    """Work out the budget of a model, its improvements, and the suppositions if there are any.
+
+    Parameters
+    ----------
+    model : MeasurementModel
+    texts : sequence of str
+        Suppositions, as in `parse_supposition`.
+
+    Returns
+    -------
+    BudgetStudy
+    """
+    supposed = what_if(model, texts) if texts else None
+    budget = planck_budget(model)
+    return BudgetStudy(budget, improvements(model), counting_floor(model), supposed)

@@ -17,7 +17,7 @@ THIN = "\N{NARROW NO-BREAK SPACE}"
 
 _SUPERSCRIPT = str.maketrans("0123456789-", "⁰¹²³⁴⁵⁶⁷⁸⁹⁻")
 # Without a power of ten, numbers of this size are still read at a glance.
-_PLAIN_FROM, _PLAIN_BELOW = -3, 6
+_PLAIN_FROM, _PLAIN_BELOW = -4, 6
 
 # A double has a decimal exponent between -324 and 308: nothing is ever lost in these digits.
 _DECIMAL = Context(prec=700, rounding=ROUND_HALF_EVEN)

@@ -31,6 +31,7 @@ SCAN_WORDS: dict[str, str] = {
     "window_deg": "choice of the fit window",
     "background_deg": "shape of the background",
     "voltage_kV": "repeatability of the voltage",
+    "scatter_deg": "scatter between scans",
 }
 ROUTE_WORDS: dict[RouteName, str] = {
     "linear": "linear propagation",
@@ -49,9 +50,11 @@ def input_words(name: str) -> str:
 
 
 def scan_of(name: str) -> str:
-    """Name of the scan an input belongs to; empty for an input of all scans."""
+    """Name of the scan an input belongs to, "all scans" for ``scan.*``; empty for other inputs."""
     match = _PER_SCAN.match(name)
-    return "" if match is None else match["scan"]
+    if match is None:
+        return ""
+    return "all scans" if match["scan"] == "*" else match["scan"]
 
 
 @dataclass(frozen=True, slots=True)
