@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import importlib
+import os
 import signal
 import sys
+from collections.abc import Callable
 from types import FrameType
 
 import click
@@ -57,8 +59,7 @@ def root() -> None:
     """
 
 
-def _terminated(_number: int, _frame: FrameType | None) -> None:
-    raise KeyboardInterrupt
+INTERRUPTED = 130
 
 
 def main(arguments: list[str] | None = None) -> None:
@@ -67,16 +68,42 @@ def main(arguments: list[str] | None = None) -> None:
     0: done; 1: done, but a judgement asked for failed; 2: bad input, said in one sentence;
     130: interrupted.
     """
-    signal.signal(signal.SIGTERM, _terminated)
+    try:
+        _on_signals(_interrupt)
+        status = _status(arguments)
+        _on_signals(_too_late)
+    except (KeyboardInterrupt, click.Abort):
+        _on_signals(_too_late)
+        click.echo("hdetermine: interrupted; no output is half-written.", err=True)
+        status = INTERRUPTED
+    sys.exit(status)
+
+
+def _status(arguments: list[str] | None) -> int:
     try:
         status = root.main(args=arguments, standalone_mode=False)
     except InputError as error:
         click.echo(f"hdetermine: {error}", err=True)
-        sys.exit(2)
+        return 2
     except click.ClickException as error:
         click.echo(f"hdetermine: {error.format_message()}", err=True)
-        sys.exit(2)
-    except (KeyboardInterrupt, click.Abort):
-        click.echo("hdetermine: interrupted; nothing was written.", err=True)
-        sys.exit(130)
-    sys.exit(status if isinstance(status, int) else 0)
+        return 2
+    except BrokenPipeError:
+        # Whoever read our output has left; nothing more can be said there, at the end neither.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return 1
+    return status if isinstance(status, int) else 0
+
+
+def _on_signals(handler: Callable[[int, FrameType | None], None]) -> None:
+    for number in (signal.SIGINT, signal.SIGTERM):
+        if signal.getsignal(number) is not signal.SIG_IGN:  # as under nohup: then it stays so
+            signal.signal(number, handler)
+
+
+def _interrupt(_number: int, _frame: FrameType | None) -> None:
+    raise KeyboardInterrupt
+
+
+def _too_late(_number: int, _frame: FrameType | None) -> None:
+    """The work is done, and its exit status is settled."""

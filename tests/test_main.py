@@ -1,0 +1,82 @@
+"""The command line as a process: exit statuses, one sentence, interruption, closed pipes."""
+
+from __future__ import annotations
+
+import signal
+import subprocess
+import sys
+
+import pytest
+
+from hdetermine import __version__
+
+MODULE = [sys.executable, "-m", "hdetermine"]
+
+
+def run(*arguments, **options):
+    return subprocess.run([*MODULE, *arguments], capture_output=True, text=True, **options)
+
+
+def test_version_and_help():
+    assert run("--version").stdout.strip() == f"hdetermine {__version__}"
+    shown = run("--help")
+    assert shown.returncode == 0
+    assert "interlocked, type-approved enclosure" in " ".join(shown.stdout.split())
+    assert run("-h").stdout == shown.stdout
+
+
+@pytest.mark.parametrize(
+    ("arguments", "words"),
+    [
+        (("analyse", "no/such/folder"), "no such folder"),
+        (("analyze", "no/such/folder"), "no such folder"),
+        (("analyse",), "RUN"),
+        (("analyse", "x", "--seed", "-1"), "--seed"),
+        (("nothing",), "No such command"),
+        (("--nothing",), "No such option"),
+    ],
+)
+def test_bad_input_is_one_sentence_and_status_two(arguments, words):
+    refused = run(*arguments)
+    assert refused.returncode == 2
+    assert refused.stdout == ""
+    assert refused.stderr.startswith("hdetermine: ")
+    assert words in refused.stderr
+    assert refused.stderr.count("\n") == 1
+
+
+def test_a_closed_pipe_is_no_traceback():
+    process = subprocess.Popen([*MODULE, "schema"], stdout=subprocess.PIPE, stderr=subprocess.PIPE)
+    process.stdout.close()
+    stderr = process.stderr.read()
+    process.stderr.close()
+    assert process.wait() == 1
+    assert stderr == b""
+
+
+STARTED = """
+import os, signal, sys
+from importlib.machinery import PathFinder
+
+class Finder(PathFinder):
+    @classmethod
+    def find_spec(cls, name, path=None, target=None):
+        if name == {name!r}:
+            os.kill(os.getpid(), {number})
+        return None
+
+sys.meta_path.insert(0, Finder)
+sys.argv = ["hdetermine", "analyse", "no/such/folder"]
+from hdetermine.__main__ import main
+main()
+"""
+
+
+@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
+@pytest.mark.parametrize("name", ["click", "hdetermine.cli", "hdetermine.cli.analyse", "numpy"])
+def test_interrupted_while_importing(number, name):
+    code = STARTED.format(name=name, number=int(number))
+    ended = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True)
+    assert ended.returncode == 130
+    assert ended.stderr.strip().startswith("hdetermine: interrupted")
+    assert "Traceback" not in ended.stderr
