@@ -81,7 +81,7 @@ def main(arguments: list[str] | None = None) -> None:
 
 def _status(arguments: list[str] | None) -> int:
     try:
-        status = root.main(args=arguments, standalone_mode=False)
+        status = root.main(args=arguments, prog_name="hdetermine", standalone_mode=False)
     except InputError as error:
         click.echo(f"hdetermine: {error}", err=True)
         return 2
