@@ -217,3 +217,9 @@ def test_table_too_large(tmp_path, monkeypatch):
 def test_twenty_thousand_points(tmp_path):
     rows = "".join(f"{2 + i / 1000:.3f};1\n" for i in range(20_000))
     assert scan_of(tmp_path, "theta/deg;counts\n" + rows).counts.size == 20_000
+
+
+def test_a_cell_with_many_commas_is_not_echoed_whole(tmp_path):
+    """Found by the campaign: the sentence about the decimal mark repeated the cell as it was."""
+    sentence = refusal(tmp_path, "theta;rate\n5;" + "1,2341\x86" * 300 + "\n6;3\n7;4\n8;5\n")
+    assert len(sentence) < 200

@@ -6,6 +6,8 @@ import re
 from collections.abc import Iterable
 from typing import Literal
 
+from hdetermine.files.plaintext import quoted
+
 Decimal = Literal["point", "comma"]
 
 _EXPONENT = re.compile(r"[eE][+-]?[0-9]{1,4}$")
@@ -50,6 +52,8 @@ class Marks:
     def note(self, cells: Iterable[str], below_thousand: bool = False) -> None:
         """Look at cells; `below_thousand` if none of them can reach 1000 (an angle)."""
         for cell in cells:
+            if not looks_numeric(cell):
+                continue  # refused later, by its place
             text = tidy(cell).lstrip("+-")
             points, commas = text.count("."), text.count(",")
             if not points and not commas:
@@ -74,15 +78,15 @@ class Marks:
             With a message fragment, if the cells leave it open or contradict each other.
         """
         if self.grouped:
-            raise ValueError(f'"{self.grouped}" has a thousands separator')
+            raise ValueError(f"{quoted(self.grouped)} has a thousands separator")
         if len(self.certain) == 2:
             raise ValueError(
-                f'"{self.certain["point"]}" has a decimal point and "{self.certain["comma"]}" a '
-                "decimal comma"
+                f"{quoted(self.certain['point'])} has a decimal point and "
+                f"{quoted(self.certain['comma'])} a decimal comma"
             )
         for mark, cell in self.unclear.items():
             if mark not in self.certain:
-                raise ValueError(f'"{cell}" may be a thousand and more or a decimal number')
+                raise ValueError(f"{quoted(cell)} may be a thousand and more or a decimal number")
         return "comma" if "comma" in self.certain else "point"
 
 

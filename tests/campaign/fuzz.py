@@ -1,0 +1,141 @@
+"""The long campaign of damaged files.
+
+``python tests/campaign/fuzz.py [--inputs N] [--first SEED]``
+
+Not part of the ordinary tests. Every input is one seed: the kind of file, the specimen and the
+damage all follow from it, so that any finding can be repeated with ``--first SEED --inputs 1``.
+The work is done in child processes, one for each thousand seeds, with 1 GB of memory, so that an
+abort is a finding too. Exit status 0 if there were none.
+"""
+
+from __future__ import annotations
+
+import argparse
+import json
+import random
+import resource
+import subprocess
+import sys
+import tempfile
+import time
+import traceback
+from collections import Counter
+from pathlib import Path
+
+HERE = Path(__file__).resolve()
+sys.path.insert(0, str(HERE.parents[1]))
+
+CHUNK = 1000
+MEMORY_BYTES = 1 << 30
+LONGEST_s = 10.0
+KINDS = ("run sheet", "table", "table", "xlsx", "ods", "draft", "bytes")
+
+
+def one_input(seed: int, folder: Path) -> tuple[str, str]:
+    """Make the input of a seed and read it; returns its kind and ``read`` or ``refused``."""
+    import file_specimens
+    from file_mutations import damaged, damaged_archive
+    from sheet_text import SHEET
+
+    from hdetermine.errors import InputError
+    from hdetermine.files.draft import draft_sheet
+    from hdetermine.files.plaintext import plain_text
+    from hdetermine.files.runsheet import read_run
+
+    chance = random.Random(seed)
+    kind = chance.choice(KINDS)
+    more, text = chance.choice(file_specimens.TABLES)
+    sheet, table = file_specimens.sheet_for(more).encode(), text.encode()
+    if kind == "run sheet":
+        sheet = damaged(sheet, chance)
+    elif kind in ("table", "draft"):
+        table = damaged(table, chance)
+    elif kind == "bytes":
+        table = chance.randbytes(chance.randrange(2000))
+    else:
+        sheet = SHEET.encode()
+        make = file_specimens.xlsx if kind == "xlsx" else file_specimens.ods
+        table = damaged_archive(make(), chance)
+    (folder / "run.toml").write_bytes(sheet)
+    (folder / "a.csv").write_bytes(table)
+    try:
+        if kind == "draft":
+            draft_sheet(folder)
+        else:
+            read_run(folder)
+    except InputError as error:
+        sentence = str(error)
+        assert sentence == plain_text(sentence), "not plain text"
+        assert sentence.endswith("."), "not a sentence"
+        return kind, "refused"
+    return kind, "read"
+
+
+def child(first: int, number: int) -> None:
+    """Read a stretch of seeds; prints its counts as JSON, the current seed on standard error."""
+    resource.setrlimit(resource.RLIMIT_DATA, (MEMORY_BYTES, MEMORY_BYTES))
+    counts: Counter[str] = Counter()
+    findings: list[str] = []
+    slowest = 0.0
+    with tempfile.TemporaryDirectory() as name:
+        for seed in range(first, first + number):
+            print(seed, file=sys.stderr, flush=True)
+            began = time.perf_counter()
+            try:
+                kind, outcome = one_input(seed, Path(name))
+                counts[f"{kind}: {outcome}"] += 1
+            except BaseException:  # a panic inside the spreadsheet reader is no Exception
+                findings.append(f"seed {seed}: {traceback.format_exc()}")
+            took = time.perf_counter() - began
+            slowest = max(slowest, took)
+            if took > LONGEST_s:
+                findings.append(f"seed {seed}: took {took:.1f} s")
+    peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
+    json.dump(
+        {"counts": counts, "findings": findings, "slowest_s": slowest, "peak_MB": peak}, sys.stdout
+    )
+
+
+def campaign(first: int, inputs: int) -> int:
+    """Run all stretches one after the other and print what came of them."""
+    counts: Counter[str] = Counter()
+    findings: list[str] = []
+    slowest = peak = 0.0
+    for start in range(first, first + inputs, CHUNK):
+        number = min(CHUNK, first + inputs - start)
+        done = subprocess.run(
+            [sys.executable, str(HERE), "--child", "--first", str(start), "--inputs", str(number)],
+            capture_output=True,
+            text=True,
+            check=False,
+        )
+        if done.returncode != 0:
+            findings.append(f"process ended with {done.returncode}: {done.stderr[-2000:]}")
+            continue
+        result = json.loads(done.stdout)
+        counts.update(result["counts"])
+        findings += result["findings"]
+        slowest, peak = max(slowest, result["slowest_s"]), max(peak, result["peak_MB"])
+        print(f"{start + number - first} of {inputs}, {len(findings)} findings", flush=True)
+    for name, count in sorted(counts.items()):
+        print(f"{name:24} {count:7}")
+    print(f"inputs {sum(counts.values())}, slowest {slowest:.2f} s, peak memory {peak:.0f} MB")
+    for finding in findings:
+        print(finding)
+    return 1 if findings else 0
+
+
+def main() -> int:
+    parser = argparse.ArgumentParser(description=__doc__)
+    parser.add_argument("--inputs", type=int, default=20_000)
+    parser.add_argument("--first", type=int, default=1)
+    parser.add_argument("--child", action="store_true", help=argparse.SUPPRESS)
+    wanted = parser.parse_args()
+    if wanted.child:
+        child(wanted.first, wanted.inputs)
+        return 0
+    return campaign(wanted.first, wanted.inputs)
+
+
+if __name__ == "__main__":
+    sys.exit(main())

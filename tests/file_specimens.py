@@ -1,0 +1,71 @@
+"""Sound files of every supported kind, for damage to start from."""
+
+from __future__ import annotations
+
+import io
+
+import openpyxl
+from odf.opendocument import OpenDocumentSpreadsheet
+from odf.table import Table, TableCell, TableRow
+from odf.text import P
+from sheet_text import SHEET
+
+POINTS = [(5.0 + i / 10.0, (7 * i * i) % 41) for i in range(30)]
+
+
+def _rows(separator: str, comma: bool) -> str:
+    lines = (f"{angle:.1f}{separator}{count}" for angle, count in POINTS)
+    text = "\n".join(lines) + "\n"
+    return text.replace(".", ",") if comma else text
+
+
+WIDE = "# bench 3\ntheta;20 kV;25 kV\n°;counts;counts\n" + "".join(
+    f"{angle:.1f};{count};{count + 5}\n" for angle, count in POINTS
+)
+TABLES: list[tuple[str, str]] = [
+    ("", "theta_deg,counts\n" + _rows(",", False)),
+    ("", "Glanzwinkel θ / °;Impulse\n" + _rows(";", True)),
+    ("", "theta\tR / 1/s\n" + _rows("\t", False)),
+    ("", "# theta counts\n" + _rows(" ", False)),
+    ('column = "25 kV"\n', WIDE),
+    ('abscissa = "two_theta"\nordinate = "counts"\n', _rows(" ", False)),
+    ("", "λ/pm;cps\n" + "".join(f"{35 + i},1;{i},5\n" for i in range(30))),
+]
+"""Extra lines for the scan's entry, and the table."""
+
+
+def xlsx() -> bytes:
+    """A spreadsheet with a run, a note and a date."""
+    book = openpyxl.Workbook()
+    sheet = book.active
+    for row in (["Bench 3", None], ["theta / deg", "counts"], *POINTS):
+        sheet.append(list(row))
+    book.create_sheet("notes").append(["nothing here"])
+    stream = io.BytesIO()
+    book.save(stream)
+    return stream.getvalue()
+
+
+def ods() -> bytes:
+    """The same as an OpenDocument spreadsheet."""
+    document = OpenDocumentSpreadsheet()
+    table = Table(name="run")
+    for row in (["theta / deg", "counts"], *POINTS):
+        line = TableRow()
+        for cell in row:
+            if isinstance(cell, str):
+                made = TableCell(valuetype="string")
+            else:
+                made = TableCell(valuetype="float", value=cell)
+            made.addElement(P(text=str(cell)))
+            line.addElement(made)
+        table.addElement(line)
+    document.spreadsheet.addElement(table)
+    stream = io.BytesIO()
+    document.write(stream)
+    return stream.getvalue()
+
+
+def sheet_for(more: str = "") -> str:
+    """The run sheet of a specimen."""
+    return SHEET.replace('file = "a.csv"\n', 'file = "a.csv"\n' + more)
