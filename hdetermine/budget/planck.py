@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
@@ -32,6 +33,9 @@ GROUPS: Mapping[str, str] = {
     measurement.EXCESS: "continuum shape near the limit",
     measurement.EXCESS_ENERGY: "continuum shape near the limit",
     measurement.WAVELENGTH_SCALE: "reference wavelengths",
+    "continuum.smooth_1": "smooth factor of the continuum",
+    "continuum.smooth_2": "smooth factor of the continuum",
+    "continuum.smooth_3": "smooth factor of the continuum",
 }
 SCAN_GROUPS: Mapping[str, str] = {
     "counting_deg": "counting statistics",
@@ -139,5 +143,11 @@ def limiting_sentence(budget: Budget) -> str:
 
 
 def scan_family(name: str) -> str:
-    """Name that the same input of every scan shares, ``scan.*.counting_deg``; else its own."""
-    return f"scan.*.{name.rpartition('.')[2]}" if name.startswith("scan.") else name
+    """Name that inputs of one kind share; an input of no such kind keeps its own.
+
+    ``scan.*.counting_deg`` for that input of every scan, ``continuum.smooth_*`` for the terms
+    of one series.
+    """
+    if name.startswith("scan."):
+        return f"scan.*.{name.rpartition('.')[2]}"
+    return re.sub(r"_\d+\Z", "_*", name)

@@ -10,11 +10,11 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from hdetermine.budget.knowledge import with_uncertainties
 from hdetermine.budget.planck import linear_figures, planck_budget, scan_family
 from hdetermine.errors import InputError
 from hdetermine.inference import measurement
 from hdetermine.inference.spread import check_support
-from hdetermine.inference.weights import with_gls_weights
 from hdetermine.records.quantity import HALF_WIDTH_DIVISOR, Quantity
 from hdetermine.records.results import Budget, Improvement, MeasurementModel
 
@@ -47,7 +47,7 @@ class WhatIf:
 
 
 def families(model: MeasurementModel) -> dict[str, tuple[str, ...]]:
-    """Names that stand for the same input of every scan, and what they stand for."""
+    """Names that stand for several inputs of one kind, and what they stand for."""
     found: dict[str, tuple[str, ...]] = {}
     for quantity in model.inputs:
         family = scan_family(quantity.name)
@@ -118,8 +118,8 @@ def suppose(model: MeasurementModel, suppositions: Sequence[Supposition]) -> Mea
     """Return the model with supposed uncertainties and the weights that follow.
 
     A half-width turns a normal or t input into a rectangular one. The two sides of a cutoff's
-    likelihood scale with its supposed counting uncertainty. Estimates, responses and
-    correlations stay.
+    likelihood scale with its supposed counting uncertainty. Estimates and responses stay; what
+    happens to inputs that are correlated with a supposed one says `knowledge`.
 
     Raises
     ------
@@ -138,23 +138,29 @@ def suppose(model: MeasurementModel, suppositions: Sequence[Supposition]) -> Mea
                 raise InputError(
                     f"--suppose gives two forms of uncertainty for {name}; give u or half_width."
                 )
-    inputs = tuple(_changed(quantity, given.get(quantity.name, {})) for quantity in model.inputs)
-    changed = replace(model, inputs=inputs, skew=_scaled_sides(model, inputs))
+    inputs = tuple(_reshaped(quantity, given.get(quantity.name, {})) for quantity in model.inputs)
+    wanted = {
+        quantity.name: _wanted(quantity, given[quantity.name])
+        for quantity in inputs
+        if not given.get(quantity.name, {}).keys().isdisjoint({"u", "half_width"})
+    }
+    changed = with_uncertainties(replace(model, inputs=inputs), wanted)
     check_support(changed)
-    return with_gls_weights(changed)
+    return replace(changed, skew=_scaled_sides(model, changed.inputs))
 
 
-def _changed(quantity: Quantity, figures: dict[str, float]) -> Quantity:
-    if "u" in figures:
-        quantity = quantity.with_uncertainty(figures["u"])
-    if "half_width" in figures:
-        if quantity.half_width is None:
-            quantity = replace(quantity, distribution="rectangular")
-        divisor = HALF_WIDTH_DIVISOR[quantity.distribution]
-        quantity = quantity.with_uncertainty(figures["half_width"] / divisor)
+def _reshaped(quantity: Quantity, figures: dict[str, float]) -> Quantity:
+    if "half_width" in figures and quantity.half_width is None:
+        quantity = replace(quantity, distribution="rectangular")
     if "dof" in figures:
         quantity = replace(quantity, degrees_of_freedom=figures["dof"])
     return quantity
+
+
+def _wanted(quantity: Quantity, figures: dict[str, float]) -> float:
+    if "u" in figures:
+        return figures["u"]
+    return figures["half_width"] / HALF_WIDTH_DIVISOR[quantity.distribution]
 
 
 def _scaled_sides(model: MeasurementModel, inputs: tuple[Quantity, ...]) -> measurement.FloatArray:
@@ -198,13 +204,12 @@ def _expanded(
     model: MeasurementModel, names: Sequence[str], factor: float, coverage_probability: float
 ) -> float:
     """Expanded uncertainty with the uncertainties of some inputs multiplied."""
-    inputs = tuple(
-        quantity.with_uncertainty(factor * quantity.standard_uncertainty)
-        if quantity.name in names
-        else quantity
+    wanted = {
+        quantity.name: factor * quantity.standard_uncertainty
         for quantity in model.inputs
-    )
-    changed = with_gls_weights(replace(model, inputs=inputs))
+        if quantity.name in names
+    }
+    changed = with_uncertainties(model, wanted)
     return linear_figures(changed, coverage_probability).expanded_uncertainty_J_s
 
 
@@ -214,15 +219,15 @@ def improvements(
     """Expanded uncertainty that would remain if an input were known twice as well, or exactly.
 
     Every input with an uncertainty has an entry; inputs of the same kind of all scans have one
-    together (``scan.*.counting_deg``). The weights of the voltages are worked out anew each
-    time.
+    together (``scan.*.counting_deg``), as have the terms of one series. The weights of the
+    voltages are worked out anew each time.
 
     Parameters
     ----------
     model : MeasurementModel
     coverage_probability : float
     each_scan : bool
-        Give the inputs of single scans an entry each as well.
+        Give the members of a kind an entry each as well.
 
     Returns
     -------
@@ -230,7 +235,7 @@ def improvements(
         Sorted, the largest gain first.
     """
     together = families(model)
-    symbols = {scan_family(quantity.name): quantity.symbol for quantity in model.inputs}
+    symbols = {scan_family(quantity.name): quantity.symbol for quantity in reversed(model.inputs)}
     groups: dict[str, tuple[str, ...]] = {
         quantity.name: (quantity.name,)
         for quantity in model.inputs

@@ -25,6 +25,10 @@ WORDS: dict[str, str] = {
     names.EXCESS: "excess of the continuum near its limit",
     names.EXCESS_ENERGY: "reach of that excess",
     names.WAVELENGTH_SCALE: "wavelengths of the reference lines",
+    "continuum.smooth_*": "smooth factor of the continuum",
+    "continuum.smooth_1": "smooth factor of the continuum, first term",
+    "continuum.smooth_2": "smooth factor of the continuum, second term",
+    "continuum.smooth_3": "smooth factor of the continuum, third term",
 }
 SCAN_WORDS: dict[str, str] = {
     "counting_deg": "counting statistics",
