@@ -35,7 +35,7 @@ MAXIMUM_DRAWS = 2_000_000
 # JCGM 101:2008, 8.2: the judge should be five times finer than the tolerance it judges by. For
 # h that can take more draws than anybody waits for; the spreads reached are reported.
 VALIDATING_SHARE = 0.2
-ROUTE_DRAWS = 800_000
+VALIDATING_DRAWS = 500_000
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -105,6 +105,7 @@ def propagate(
     coverage_probability: float = 0.95,
     digits: int = 2,
     tolerance_share: float = 1.0,
+    refining_draws: int = MAXIMUM_DRAWS,
     maximum_draws: int = MAXIMUM_DRAWS,
     sampler: Sampler | None = None,
 ) -> MonteCarloResult:
@@ -128,6 +129,8 @@ def propagate(
     tolerance_share : float
         Go on until the spreads are below this share of the numerical tolerance: 1 to report
         the figures, 1/5 to validate another route by them (JCGM 101:2008, 8.2).
+    refining_draws : int
+        From here on a share below one is no longer insisted upon.
     maximum_draws : int
         Where to stop all the same.
     sampler : callable or None
@@ -170,7 +173,8 @@ def propagate(
             pooled = math.hypot(
                 math.sqrt(float(np.mean(averages[:, 1] ** 2))), float(averages[:, 0].std())
             )
-            wanted = tolerance_share * numerical_tolerance(pooled, digits)
+            share = tolerance_share if len(values) * block < refining_draws else 1.0
+            wanted = share * numerical_tolerance(pooled, digits)
             settled = bool(np.all(spread <= wanted))
     everything = np.sort(np.concatenate(values))
     u = float(everything.std(ddof=1))
@@ -283,7 +287,7 @@ def monte_carlo_route(
         digits=digits,
         coverage_probability=linear.coverage_probability,
         tolerance_share=VALIDATING_SHARE,
-        maximum_draws=ROUTE_DRAWS,
+        refining_draws=VALIDATING_DRAWS,
     )
     interval = result.symmetric
     if linear.coverage_probability != 0.95:

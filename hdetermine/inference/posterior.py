@@ -28,7 +28,7 @@ Progress = Callable[[str, int, int], None]
 
 KEPT_SAMPLES = 4000
 INTEGRATED_NOTE = (
-    "Inputs that are independent from scan to scan (fit windows, background, voltage "
+    "Inputs that are independent from scan to scan (fit windows, background, scatter, voltage "
     "repeatability) are integrated out as normal ones: their variance widens both sides of "
     "the likelihood of each cutoff."
 )
