@@ -23,6 +23,7 @@ from typing import Any
 import numpy as np
 
 from hdetermine.physics.crystals import find_kind, find_planes
+from hdetermine.physics.lines import line_groups
 from hdetermine.planning.simulation import simulate_run
 from hdetermine.planning.specification import PlannedScan
 from hdetermine.planning.spectrum import Absorber, HC_PER_E_pm_kV, SharpLine
@@ -31,12 +32,11 @@ from .record import RunRecord, study_run
 from .settings import BASE, COPPER, Setting
 
 GRID_keV = 0.1
-FINE_BIN_keV = 0.002
-"""Bins of the line energies: a half of one moves a line of 17 keV by 6e-5."""
-
-REFERENCE_RATE_PER_S = 300.0
+BIN_keV = {"casim": 0.02, "kqp": 0.05}
+SHARED_keV = 0.03
+NEAR_keV = 0.06
+LOWEST_LINE_keV = 5.0
 REFERENCE_keV = 30.0
-LINE_BAND_keV = 0.05
 
 
 @dataclass(frozen=True)
@@ -52,7 +52,7 @@ class TubeTable:
     ratio : ndarray
         Photons per keV over Kramers' (E0 - E)/E.
     line_keV, line_photons : ndarray
-        Characteristic lines, one a bin that holds any.
+        Characteristic lines.
     """
 
     energy_keV: float
@@ -66,23 +66,49 @@ def compute(target: str, physics: str, angle_deg: float, energy_keV: float) -> T
     """Ask the library for one spectrum; no filter (absorption is laid on later)."""
     import spekpy
 
-    tube: dict[str, Any] = {
-        "kvp": energy_keV, "th": angle_deg, "targ": target, "physics": physics,
-    }  # fmt: skip
-    coarse = 0.02 if physics == "casim" else 0.05
-    energy, photons = spekpy.Spek(dk=coarse, char=False, **tube).get_spectrum(flu=True, diff=True)
+    width = BIN_keV[physics]
+    tube = spekpy.Spek(kvp=energy_keV, th=angle_deg, targ=target, physics=physics, dk=width)
+    energy, photons = tube.get_spectrum(flu=True, diff=True, char=False)
+    _, line_density = tube.get_spectrum(flu=True, diff=True, brem=False, char=True)
     missing = energy_keV - energy
-    seen = missing > 1e-9
+    seen = np.flatnonzero(missing > 1e-9)[::-1]
     ratio = photons[seen] * energy[seen] / missing[seen]
-    order = np.argsort(missing[seen])
-    # Line energies are the library's own whatever the physics; casim is the quick one for bins
-    # this fine.
-    fine = spekpy.Spek(dk=FINE_BIN_keV, brem=False, **{**tube, "physics": "casim"})
-    at, density = fine.get_spectrum(flu=True, diff=True)
-    lit = np.flatnonzero((density > 0.0) & (at > 5.0))
-    return TubeTable(
-        energy_keV, missing[seen][order], ratio[order], at[lit], density[lit] * FINE_BIN_keV
+    lit = np.flatnonzero((line_density > 0.0) & (energy > LOWEST_LINE_keV))
+    at, emitted = placed_lines(target, energy[lit], line_density[lit] * width)
+    return TubeTable(energy_keV, missing[seen], ratio, at, emitted)
+
+
+def placed_lines(
+    target: str, energy_keV: np.ndarray, photons: np.ndarray
+) -> tuple[np.ndarray, np.ndarray]:
+    """Put the line photons of the bins where the lines are.
+
+    The library knows its lines only to its bins (and some to 0.01 keV): its photons are kept,
+    and go to the measured wavelengths of the line table nearby; lines closer than a bin share
+    them by their strengths. What is near no line of the table stays where it is.
+    """
+    known = sorted(
+        (HC_PER_E_pm_kV / line.wavelength_pm, line.strength)
+        for group in line_groups(target)
+        for line in group.lines
     )
+    clusters: list[list[tuple[float, float]]] = []
+    for line in known:
+        if clusters and line[0] - clusters[-1][-1][0] < SHARED_keV:
+            clusters[-1].append(line)
+        else:
+            clusters.append([line])
+    at, emitted = [], []
+    for energy, number in zip(energy_keV.tolist(), photons.tolist(), strict=True):
+        near = min(
+            clusters, key=lambda one: min(abs(e - energy) for e, _ in one), default=[(energy, 1.0)]
+        )
+        if min(abs(e - energy) for e, _ in near) > NEAR_keV:
+            near = [(energy, 1.0)]
+        whole = sum(strength for _, strength in near)
+        at += [e for e, _ in near]
+        emitted += [number * strength / whole for _, strength in near]
+    return np.array(at), np.array(emitted)
 
 
 @dataclass(frozen=True)
@@ -112,15 +138,19 @@ class Library:
         return self.loaded[index]
 
     def _store(self, index: int) -> None:
-        table = compute(self.target, self.physics, self.angle_deg, index * GRID_keV)
         self.folder.mkdir(parents=True, exist_ok=True)
+        table = compute(self.target, self.physics, self.angle_deg, index * GRID_keV)
+        self._save(
+            self.path(index), energy_keV=table.energy_keV, missing_keV=table.missing_keV,
+            ratio=table.ratio, line_keV=table.line_keV, line_photons=table.line_photons,
+        )  # fmt: skip
+
+    def _save(self, path: Path, **arrays: Any) -> None:
+        """Write under another name first: other processes may look at the same moment."""
         handle, name = tempfile.mkstemp(dir=self.folder, suffix=".part")
         with os.fdopen(handle, "wb") as stream:
-            np.savez(
-                stream, energy_keV=table.energy_keV, missing_keV=table.missing_keV,
-                ratio=table.ratio, line_keV=table.line_keV, line_photons=table.line_photons,
-            )  # fmt: skip
-        os.replace(name, self.path(index))
+            np.savez(stream, **arrays)
+        os.replace(name, path)
 
     def neighbours(self, energy_keV: float) -> tuple[TubeTable, TubeTable, float]:
         """The grid points below and above, and how far between them the energy is."""
