@@ -88,6 +88,14 @@ def test_common_relative_error_does_not_drag_the_mean_below_its_values():
     assert np.all(model.weights > 0.0)
 
 
+def test_a_cutoff_that_lies_low_by_chance_does_not_look_more_precise():
+    # Two scans of one voltage differ by chance: the relation expects the same of both.
+    model = make_model(2)
+    displayed = np.full(2, 25.0)
+    model = replace(model, displayed_kV=displayed, reading_deg=np.array([6.5, 7.3]))
+    np.testing.assert_allclose(w.gls_weights(model), [0.5, 0.5], atol=1e-9)
+
+
 def test_weights_and_mean_of_a_scattered_run():
     model = make_model(9, scatter_seed=3)
     assert model.weights.sum() == pytest.approx(1.0, abs=1e-12)
