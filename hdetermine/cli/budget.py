@@ -33,15 +33,12 @@ SHOWN_IMPROVEMENTS = 8
 @click.option("--format", "formats", type=click.Choice(FORMATS), multiple=True,
               help="Write only this format. Repeatable.")  # fmt: skip
 @click.option("--each-scan", is_flag=True, help="List the inputs of every scan one by one.")
-@click.option("--seed", type=click.IntRange(min=0), default=1, show_default=True,
-              help="As of analyse; the budget itself draws nothing.")  # fmt: skip
 def command(
     source: Path,
     texts: tuple[str, ...],
     out: Path | None,
     formats: tuple[str, ...],
     each_scan: bool,
-    seed: int,
 ) -> None:
     """Account for the uncertainty of h.
 
@@ -52,7 +49,7 @@ def command(
     from hdetermine.files.atomic import write_outputs
     from hdetermine.report.budget_files import budget_files
 
-    model, beside = _model(source, seed)
+    model, beside = _model(source)
     found = study(model, texts)
     outputs = budget_files(found, dict.fromkeys(formats or FORMATS))
     target = out if out is not None else beside / "budget"
@@ -61,7 +58,7 @@ def command(
     click.echo(f"Written to {click.format_filename(target)}: {', '.join(outputs)}")
 
 
-def _model(source: Path, seed: int) -> tuple[MeasurementModel, Path]:
+def _model(source: Path) -> tuple[MeasurementModel, Path]:
     """The measurement model, and the folder beside which to write."""
     from hdetermine.errors import InputError
     from hdetermine.files.resultfile import load_model
@@ -73,7 +70,7 @@ def _model(source: Path, seed: int) -> tuple[MeasurementModel, Path]:
 
         run = read_run(source)
         with working("analysing") as progress:
-            found = determine(run, seed, posterior=False, monte_carlo=False, progress=progress)
+            found = determine(run, posterior=False, monte_carlo=False, progress=progress)
         return found.model, source
     if source.is_dir():
         if not (source / RESULT).exists():
