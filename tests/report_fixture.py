@@ -238,8 +238,23 @@ def routes(h: float, u: float, posterior: str) -> dict[str, Route]:
         found["posterior"] = Route(
             "posterior", h * 0.9998, u * 0.99, (h - 1.95 * u, h + 1.98 * u), done,
             "" if done else "the chain has not converged: split R-hat 1.31 exceeds 1.05",
-            {"autocorrelation_time": 61.2, "effective_sample_size": 1830.0 if done else 41.0,
-             "split_r_hat": 1.004 if done else 1.31, "converged": done},
+            {"walkers": 64, "steps": 800, "acceptance_fraction": 0.57, "converged": done,
+             "autocorrelation_steps": {"h": 3.02, names.GAIN: 2.99},
+             "effective_sample_size": {"h": 25798.0 if done else 41.0, names.GAIN: 26284.0},
+             "split_rhat": {"h": 1.0047 if done else 1.31, names.GAIN: 1.004},
+             "limits": {"steps_per_autocorrelation_time": 50.0, "split_rhat": 1.05},
+             "priors": [
+                 {"quantity": "h", "unit": "J s", "distribution": "flat", "sampled": True},
+                 {"quantity": names.GAIN, "unit": "1", "distribution": "normal", "value": 1.0,
+                  "standard_uncertainty": 0.004, "sampled": True, "posterior_value": 1.0001,
+                  "posterior_standard_uncertainty": 0.0039},
+                 {"quantity": "scan.x.window_deg", "unit": "deg", "sampled": False}],
+             "integrated_out": "Inputs of single scans are integrated out.",
+             "prior_sensitivity": {
+                 "all_doubled": {"value_J_s": h, "standard_uncertainty_J_s": u,
+                                 "expanded_uncertainty_J_s": 3.9 * u},
+                 "each_doubled_linear": [{"quantity": names.GAIN, "value_J_s": h,
+                                          "expanded_uncertainty_J_s": 2.9 * u}]}},
         )  # fmt: skip
     return found
 

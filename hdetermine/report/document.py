@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from hdetermine.budget.planck import limiting_sentence
 from hdetermine.records.results import Cutoff, Determination
 from hdetermine.records.scan import Scan
-from hdetermine.report import rows, rows_budget, rows_scale, rows_source
+from hdetermine.report import rows, rows_budget, rows_routes, rows_scale, rows_source
 from hdetermine.report.figure_svg import Picture
 from hdetermine.report.figures import Figures, draw_figures
 from hdetermine.report.plaintext import plain
@@ -149,11 +149,16 @@ def lead(d: Determination) -> Lead:
         coverage=f"k = {decimals(h.coverage_factor, 2).text}, p = {probability}",
         deviation=decimals(100.0 * comparison.relative_deviation, 2, "%", signed=True).text,
         agreement=decimals(comparison.E_n, 2).text,
-        verdict=plain(comparison.verdict, 500),
+        verdict=_sentence(plain(comparison.verdict, 500)),
         limits=limiting_sentence(d.budget),
         route=plain(h.route_reason, 500),
         agrees=abs(comparison.E_n) <= 1.0,
     )
+
+
+def _sentence(verdict: str) -> str:
+    """Make a clause such as "agrees with the SI value" a sentence."""
+    return f"The result {verdict}." if verdict[:1].islower() else verdict
 
 
 def apparatus_line(d: Determination) -> str:
@@ -174,12 +179,11 @@ def apparatus_line(d: Determination) -> str:
 
 
 def _tables(d: Determination) -> dict[str, Table]:
-    posterior = d.routes.get("posterior")
-    monte_carlo = d.routes.get("monte_carlo")
+    posterior, monte_carlo = d.routes.get("posterior"), d.routes.get("monte_carlo")
     made = (
         rows.result_rows(d),
         rows.cutoff_rows(d),
-        rows.route_rows(d),
+        rows_routes.route_rows(d),
         rows.backward_rows(d),
         rows.check_rows(d),
         rows.improvement_rows(d),
@@ -188,16 +192,11 @@ def _tables(d: Determination) -> dict[str, Table]:
         rows_scale.scale_rows(d),
         rows_scale.line_rows(d),
         rows_scale.relation_rows(d),
-        None
-        if monte_carlo is None
-        else rows_scale.diagnostic_rows(
-            "monte-carlo", "Monte Carlo: draws and validation", monte_carlo.diagnostics
-        ),
-        None
-        if posterior is None
-        else rows_scale.diagnostic_rows(
-            "posterior", "Posterior: convergence and settings", posterior.diagnostics
-        ),
+        rows_routes.monte_carlo_rows(monte_carlo),
+        rows_routes.sampling_rows("posterior", "Posterior: sampling", posterior),
+        rows_routes.convergence_rows(posterior),
+        rows_routes.prior_rows(posterior),
+        rows_routes.sensitivity_rows(posterior),
         rows_source.file_rows(d),
         rows_source.version_rows(d),
         rows_source.setting_rows(d),

@@ -29,7 +29,7 @@ def budget_picture(d: Determination) -> Picture:
         share = 100.0 * one.variance_share
         colour, hatch = (BLUE, "") if one.common else (ORANGE, "////")
         axes.barh(i, share, 0.42, facecolor=colour if one.common else "none", edgecolor=colour,
-                  hatch=hatch, hatchcolor=colour, linewidth=1.0)  # fmt: skip
+                  hatch=hatch, linewidth=1.0)  # fmt: skip
         name = one.words if one.common or one.count == 1 else f"{one.words}, {one.count} scans"
         axes.text(0.0, i - 0.27, name, ha="left", va="bottom", fontsize=9.5)
         axes.text(max(share, 0.0) + 1.2 * longest, i, f"{share:.1f} %".replace("-", "−"),
@@ -43,7 +43,7 @@ def budget_picture(d: Determination) -> Picture:
     axes.set_xlabel("share of the variance of h / %")
     handles = [
         Patch(facecolor=BLUE, edgecolor=BLUE, label="common to all voltages"),
-        Patch(facecolor="none", edgecolor=ORANGE, hatch="////", hatchcolor=ORANGE,
+        Patch(facecolor="none", edgecolor=ORANGE, hatch="////",
               label="independent, scan by scan"),
     ]  # fmt: skip
     figure.legend(handles=handles, loc="lower left", ncols=2, bbox_to_anchor=(0.02, 0.005))

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from hdetermine.records.results import AngleScale
+from hdetermine.records.results import AngleScale, LineMeasure
 from hdetermine.report.figure_style import BLUE, INK, MUTED, canvas, few_ticks
 from hdetermine.report.figure_svg import Picture, picture
 from hdetermine.report.plaintext import plain
@@ -25,26 +25,26 @@ def lines_picture(scale: AngleScale) -> Picture | None:
     figure = canvas(235.0 + legend, bottom=43.0 + legend)
     axes = figure.subplots()
     axes.axhline(0.0, color=BLUE, linewidth=1.2)
+    places = _spread_out(scale.lines)
     for i, (label, order) in enumerate(labels):
-        marker = _MARKERS[i % len(_MARKERS)]
+        name = plain(label, 30) if order == 1 else f"{plain(label, 30)}, order {order}"
         for used in (True, False):
-            lines = [
-                line
-                for line in scale.lines
+            drawn = [
+                (place, line)
+                for place, line in zip(places, scale.lines, strict=True)
                 if (line.label, line.order, line.used) == (label, order, used)
             ]
-            if not lines:
+            if not drawn:
                 continue
-            name = plain(label, 30) if order == 1 else f"{plain(label, 30)}, order {order}"
             axes.errorbar(
-                [line.reading_deg for line in lines], [line.residual_deg for line in lines],
-                yerr=[line.reading_u_deg for line in lines], fmt=marker, color=INK, ecolor=MUTED,
-                elinewidth=1.0, capsize=2.5, markersize=5.5,
-                markerfacecolor=INK if used else "none",
+                [place for place, _ in drawn], [line.residual_deg for _, line in drawn],
+                yerr=[line.reading_u_deg for _, line in drawn],
+                fmt=_MARKERS[i % len(_MARKERS)], color=INK, ecolor=MUTED, elinewidth=1.0,
+                capsize=2.5, markersize=5.0, markerfacecolor=INK if used else "none",
                 label=name if used else f"{name} (not used)",
             )  # fmt: skip
     few_ticks(axes)
-    axes.set_xlabel("reading of the line / °")
+    axes.set_xlabel("glancing angle as read / °")
     axes.set_ylabel("reading − expectation / °")
     handles, names = axes.get_legend_handles_labels()
     figure.legend(handles, names, loc="lower left", ncols=2, bbox_to_anchor=(0.02, 0.005))
@@ -56,6 +56,19 @@ def lines_picture(scale: AngleScale) -> Picture | None:
     )
     caption = (
         "Reading of each characteristic line minus its expectation on the fitted angle scale, "
-        "with standard uncertainties; each marker is a line, hollow ones were not used."
+        "with standard uncertainties; each marker is a line, hollow ones were not used. Where "
+        "several scans saw the same line, its points are drawn a little apart."
     )
     return picture(figure, "lines", alt, caption)
+
+
+def _spread_out(lines: tuple[LineMeasure, ...]) -> list[float]:
+    """Abscissa of every line: its reading, moved sideways where others stand there too."""
+    readings = [line.reading_deg for line in lines]
+    room = 0.1 * (max(readings) - min(readings) or 1.0)
+    keys = [(line.label, line.order) for line in lines]
+    places = []
+    for i, line in enumerate(lines):
+        number, before = keys.count(keys[i]), keys[:i].count(keys[i])
+        places.append(line.reading_deg + room * (before - 0.5 * (number - 1)) / max(number, 4))
+    return places

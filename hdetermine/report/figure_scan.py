@@ -172,6 +172,10 @@ def close_view_deg(scan: Scan, cutoff: Cutoff, curve: FittedCurve) -> tuple[floa
     first, last = (inside[0], inside[-1]) if inside.size else curve.reading_deg[[0, -1]]
     low = max(cutoff.reading_deg - STEPS_BELOW * step, float(first) - 2.0 * step)
     high = min(cutoff.reading_deg + STEPS_ABOVE * step, float(last) + 2.0 * step)
+    low, high = (
+        min(low, cutoff.reading_deg - 2.0 * step),
+        max(high, cutoff.reading_deg + 2.0 * step),
+    )
     return low - 0.3 * step, high + 0.3 * step
 
 

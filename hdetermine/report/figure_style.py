@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from cycler import cycler
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.ticker import FuncFormatter, LogLocator, MaxNLocator, NullLocator
@@ -22,7 +23,7 @@ ORANGE = "#ab4400"
 GREEN = "#006b47"
 PURPLE = "#84347a"
 SHADE = "#e3edf7"
-BAND = "#f7dcc6"
+BAND = "#fae4d6"
 
 LIGHT: dict[str, str] = {
     "ink": INK,
@@ -86,7 +87,8 @@ STYLE: Any = {
     "legend.borderaxespad": 0.0,
     "lines.linewidth": 1.5,
     "hatch.linewidth": 0.7,
-    "hatch.color": INK,
+    "axes.prop_cycle": cycler(color=[INK]),
+    "patch.facecolor": INK,
     "path.simplify": True,
 }
 

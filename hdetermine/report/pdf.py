@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
+import datetime
 import json
 import os
-import re
 import tempfile
 from collections.abc import Iterator
 from functools import lru_cache
@@ -19,7 +19,7 @@ from hdetermine.errors import InputError
 from hdetermine.records.results import Determination
 from hdetermine.report.document import Document, ScanPanel, report_document
 from hdetermine.report.figure_svg import Picture
-from hdetermine.report.table import Table
+from hdetermine.report.table import Cell, Table
 from hdetermine.report.templates import find_templates
 
 TEMPLATE = "report.typ"
@@ -116,8 +116,11 @@ def _compiled(root: Path, content: dict[str, Any]) -> bytes:
 
 def run_date(text: str) -> tuple[int, int, int] | None:
     """Year, month and day of an ISO date at the start of a text; None without one."""
-    match = re.match(r"(\d{4})-(0[1-9]|1[0-2])-(0[1-9]|[12]\d|3[01])(?!\d)", text)
-    return None if match is None else (int(match[1]), int(match[2]), int(match[3]))
+    try:
+        date = datetime.date.fromisoformat(text[:10])
+    except ValueError:
+        return None
+    return date.year, date.month, date.day
 
 
 def _timestamp() -> int:
@@ -160,12 +163,7 @@ def document_data(document: Document) -> dict[str, Any]:
 def _picture(picture: Picture | None) -> dict[str, str] | None:
     if picture is None:
         return None
-    svg = picture.svg.replace("<svg ", '<svg xmlns="http://www.w3.org/2000/svg" ', 1)
-    return {
-        "svg": picture.svg if 'xmlns="' in picture.svg[:200] else svg,
-        "alt": picture.alt,
-        "caption": picture.caption,
-    }
+    return {"svg": picture.svg, "alt": picture.alt, "caption": picture.caption}
 
 
 def _table(table: Table) -> dict[str, Any]:
@@ -177,15 +175,16 @@ def _table(table: Table) -> dict[str, Any]:
         "groups": [
             {
                 "heading": group.heading,
-                "rows": [
-                    [{"text": cell.text, "detail": cell.detail} for cell in row]
-                    for row in group.rows
-                ],
+                "rows": [[_cell(cell) for cell in row] for row in group.rows],
             }
             for group in table.groups
         ],
         "note": table.note,
     }
+
+
+def _cell(cell: Cell) -> dict[str, str]:
+    return {"text": cell.text, "detail": cell.detail, "subscript": cell.subscript}
 
 
 def _scan(scan: ScanPanel) -> dict[str, Any]:

@@ -8,7 +8,6 @@ import numpy as np
 
 from hdetermine.physics.constants import ELEMENTARY_CHARGE_C, PLANCK_PER_SLOPE
 from hdetermine.records.results import Cutoff, Determination
-from hdetermine.report.rounding import two_digits
 from hdetermine.report.spoken import ROUTE_WORDS, input_words, scan_of
 from hdetermine.report.table import (
     NONE,
@@ -16,11 +15,17 @@ from hdetermine.report.table import (
     Table,
     decimals,
     digits,
+    in_units,
+    percent,
     plus_minus,
     table,
     with_uncertainty,
     words,
 )
+
+MOST_IMPROVEMENTS = 12
+LEAST_GAIN = 0.001
+"""Relative gain below which an input is not worth a row of its own."""
 
 
 def result_rows(d: Determination) -> Table:
@@ -41,7 +46,7 @@ def result_rows(d: Determination) -> Table:
          Cell("Welch–Satterthwaite")),
         (Cell("relative standard uncertainty"),
          digits(100.0 * h.relative_standard_uncertainty, 2, "%"), Cell("u/h")),
-        (Cell("relative deviation"), _percent(d.comparison.relative_deviation),
+        (Cell("relative deviation"), percent(d.comparison.relative_deviation),
          words("from the SI value, which is exact")),
         (Cell("Eₙ"), decimals(d.comparison.E_n, 2),
          Cell("deviation over U; agreement up to 1 in magnitude")),
@@ -49,7 +54,7 @@ def result_rows(d: Determination) -> Table:
          with_uncertainty(h.value_J_s / ELEMENTARY_CHARGE_C,
                           h.standard_uncertainty_J_s / ELEMENTARY_CHARGE_C, "eV s"),
          Cell("the same value, divided by the elementary charge")),
-        (Cell("route"), Cell(ROUTE_WORDS[h.route]), words(h.route_reason)),
+        (Cell("route"), Cell(ROUTE_WORDS[h.route]), Cell("see the three routes")),
     ]  # fmt: skip
     return table("result", "The result in figures", ("quantity", "value", "meaning"), rows)
 
@@ -58,10 +63,6 @@ def _freedom(number: float) -> Cell:
     if not math.isfinite(number) or number >= 1e4:
         return Cell("∞" if number > 0 else NONE, number)
     return Cell(f"{math.floor(number + 1e-9)}", number)
-
-
-def _percent(share: float, places: int = 2) -> Cell:
-    return Cell(decimals(100.0 * share, places, "%", signed=True).text, share)
 
 
 def single_values_J_s(d: Determination) -> dict[str, tuple[float, float]]:
@@ -100,7 +101,7 @@ def cutoff_rows(d: Determination) -> Table:
                 with_uncertainty(cutoff.reading_deg, own_u),
                 decimals(cutoff.glancing_angle_deg, 3),
                 with_uncertainty(cutoff.wavelength_pm, cutoff.standard_uncertainty_pm),
-                _in_units(value, value_u, -34),
+                in_units(value, value_u, -34),
                 decimals(shift, 2, signed=True),
                 Cell(
                     f"{decimals(cutoff.deviance, 1).text} / {cutoff.degrees_of_freedom}",
@@ -127,13 +128,6 @@ def own_u_deg(cutoff: Cutoff) -> float:
     """Standard uncertainty that the scan itself brings: counting, windows, backgrounds."""
     parts = (cutoff.counting_u_deg, cutoff.window_u_deg, cutoff.background_u_deg)
     return math.hypot(*(part for part in parts if math.isfinite(part)))
-
-
-def _in_units(value: float, uncertainty: float, exponent: int) -> Cell:
-    if not (math.isfinite(value) and math.isfinite(uncertainty)):
-        return Cell(NONE)
-    parts = two_digits(value, uncertainty, exponent=exponent)
-    return Cell(f"{parts.value}({parts.last_digits})", value)
 
 
 def scan_facts(cutoff: Cutoff) -> tuple[tuple[str, Cell], ...]:
@@ -189,39 +183,6 @@ def refused_rows(d: Determination) -> Table | None:
                  numeric=(1,))  # fmt: skip
 
 
-def route_rows(d: Determination) -> Table:
-    """The routes side by side."""
-    rows = []
-    for name, spoken in ROUTE_WORDS.items():
-        route = d.routes.get(name)
-        if route is None:
-            rows.append((Cell(spoken), Cell(NONE), Cell(NONE), Cell(NONE), Cell("not taken")))
-            continue
-        low, high = route.interval_95_J_s
-        state = "reported" if name == d.h.route else "confirms"
-        rows.append(
-            (
-                Cell(spoken),
-                _in_units(route.value_J_s, route.standard_uncertainty_J_s, -34),
-                _in_interval(low, high, route.standard_uncertainty_J_s),
-                _percent(route.value_J_s / d.comparison.reference_J_s - 1.0),
-                words(state if route.usable else f"not usable: {route.reason}"),
-            )
-        )
-    return table(
-        "routes",
-        "h by three routes",
-        ("route", "h / 10⁻³⁴ J s", "95 % interval / 10⁻³⁴ J s", "deviation", "use"),
-        rows,
-        numeric=(1, 2, 3),
-    )
-
-
-def _in_interval(low: float, high: float, uncertainty: float) -> Cell:
-    ends = [two_digits(end, uncertainty, exponent=-34).value for end in (low, high)]
-    return Cell(f"{ends[0]} to {ends[1]}", low)
-
-
 def backward_rows(d: Determination) -> Table:
     """With h exact: the implied voltage gain and the implied spacing."""
     back, kit = d.read_backwards, d.run.apparatus
@@ -255,26 +216,37 @@ def improvement_rows(d: Determination) -> Table | None:
     """What U would remain if an input were better known; None without such figures."""
     if not d.improvements:
         return None
+    whole = d.h.expanded_uncertainty_J_s
+    gains = [1.0 - one.expanded_if_zero / whole for one in d.improvements]
+    shown = sum(gain >= LEAST_GAIN for gain in gains[:MOST_IMPROVEMENTS]) or 1
     rows = []
-    for one in d.improvements:
-        scan = scan_of(one.quantity)
+    for one in d.improvements[:shown]:
+        scan = scan_of(one.quantity).replace("*", "all scans")
         name = input_words(one.quantity) + (f", {scan}" if scan else "")
         rows.append(
             (
                 words(name, one.quantity),
                 digits(one.expanded_if_halved, 2, "J s"),
-                _percent(one.expanded_if_halved / d.h.expanded_uncertainty_J_s - 1.0, 1),
+                percent(one.expanded_if_halved / whole - 1.0, 1),
                 digits(one.expanded_if_zero, 2, "J s"),
-                _percent(one.expanded_if_zero / d.h.expanded_uncertainty_J_s - 1.0, 1),
+                percent(one.expanded_if_zero / whole - 1.0, 1),
             )
         )
-    floor = digits(d.counting_floor_J_s, 2, "J s").text
+    note = (
+        f"U is {digits(whole, 2, 'J s').text} now; with perfect counting statistics it would "
+        f"stay at {digits(d.counting_floor_J_s, 2, 'J s').text}."
+    )
+    if len(gains) > shown:
+        rest = 100.0 * max(0.0, *gains[shown:])
+        note += (
+            f" None of the other {len(gains) - shown} entries would lower U by more than "
+            f"{decimals(rest, 1, '%').text}."
+        )
     return table(
         "improvements",
         "U(h) if one input were better known",
         ("input", "U with half its u", "change", "U with its u zero", "change"),
         rows,
         numeric=(1, 2, 3, 4),
-        note=f"With perfect counting statistics U would stay at {floor}; it is "
-        f"{digits(d.h.expanded_uncertainty_J_s, 2, 'J s').text} now.",
+        note=note,
     )

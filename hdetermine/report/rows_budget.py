@@ -17,6 +17,7 @@ from hdetermine.report.table import (
     decimals,
     digits,
     spelled,
+    symbol,
     with_uncertainty,
 )
 
@@ -87,12 +88,13 @@ def _row(row: BudgetRow, budget: Budget, exponent: int) -> tuple[Cell, ...]:
         CORRELATED_MARK if _partners(row, budget) else ""
     )
     name = input_words(row.quantity) + (f" {mark}" if mark else "")
-    estimate = with_uncertainty(row.estimate, row.standard_uncertainty).text.partition("(")
-    power = estimate[2].partition(")")[2]
+    rounded = with_uncertainty(row.estimate, row.standard_uncertainty).text
+    number, _, rest = rounded.partition("(")
+    estimate = "0" if row.estimate == 0.0 else number + rest.partition(")")[2]
     return (
         Cell(name, None, scan or row.quantity),
-        Cell(row.symbol),
-        Cell(estimate[0] + power, row.estimate),
+        symbol(row.symbol),
+        Cell(estimate, row.estimate),
         digits(row.standard_uncertainty, 2),
         Cell(spelled(row.unit)),
         Cell(row.evaluation),
@@ -100,9 +102,17 @@ def _row(row: BudgetRow, budget: Budget, exponent: int) -> tuple[Cell, ...]:
         Cell("∞" if math.isinf(row.degrees_of_freedom) else f"{row.degrees_of_freedom:.0f}",
              row.degrees_of_freedom),
         digits(row.sensitivity, 3),
-        Cell(digits(row.contribution / 10.0**exponent, 2).text, row.contribution),
+        Cell(_two_digits_plain(row.contribution / 10.0**exponent), row.contribution),
         Cell(decimals(100.0 * row.variance_share, 2).text, row.variance_share),
     )  # fmt: skip
+
+
+def _two_digits_plain(number: float) -> str:
+    """Two significant digits without a power of ten, four decimals at most."""
+    if number == 0.0:
+        return "0"
+    places = min(4, max(0, 1 - math.floor(math.log10(abs(number)))))
+    return decimals(number, places).text
 
 
 def _partners(row: BudgetRow, budget: Budget) -> tuple[str, ...]:

@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterator, Mapping
 
 from hdetermine.records.results import Determination, Relation
+from hdetermine.report.rounding import grouped
 from hdetermine.report.spoken import input_words
 from hdetermine.report.table import (
     NONE,
@@ -14,10 +15,12 @@ from hdetermine.report.table import (
     decimals,
     digits,
     table,
+    united,
     with_uncertainty,
     words,
 )
 
+KEY_UNITS = {"J_s": "J s", "deg": "deg", "pm": "pm", "keV": "keV", "eV": "eV", "kV": "kV", "s": "s"}
 FROM_WORDS = {
     "lines": "characteristic lines",
     "prior": "the run sheet",
@@ -131,13 +134,26 @@ def diagnostic_rows(name: str, caption: str, figures: Mapping[str, object]) -> T
     return table(f"diagnostics-{name}", caption, ("figure", "value"), rows)
 
 
-def _flat(prefix: str, figures: Mapping[str, object]) -> Iterable[tuple[str, str]]:
+def _flat(prefix: str, figures: Mapping[str, object]) -> Iterator[tuple[str, str]]:
     for key, value in figures.items():
-        label = f"{prefix}{key}".replace("_", " ")
+        name, unit = _name_and_unit(key)
         if isinstance(value, Mapping):
-            yield from _flat(f"{label}: ", value)
+            for label, text in _flat("", value):
+                yield f"{prefix}{name}: {label}", _with_unit(text, unit)
         else:
-            yield label, _spoken(value)
+            yield f"{prefix}{name}", _with_unit(_spoken(value), unit)
+
+
+def _name_and_unit(key: str) -> tuple[str, str]:
+    """Part ``spread_J_s`` into words and unit, as the keys of the records are made."""
+    for suffix, unit in KEY_UNITS.items():
+        if key.endswith(f"_{suffix}"):
+            return key.removesuffix(f"_{suffix}").replace("_", " "), unit
+    return input_words(key).replace("_", " "), ""
+
+
+def _with_unit(text: str, unit: str) -> str:
+    return united(text, unit) if any(one.isdigit() for one in text) else text
 
 
 def _spoken(value: object) -> str:
@@ -148,7 +164,7 @@ def _spoken(value: object) -> str:
     if isinstance(value, float):
         return digits(value, 4).text
     if isinstance(value, int):
-        return f"{value}" if abs(value) < 10_000 else decimals(float(value), 0).text
+        return grouped(f"{value}")
     if isinstance(value, (list, tuple)):
         return ", ".join(_spoken(one) for one in value)
-    return input_words(str(value))
+    return input_words(str(value)).replace("_", " ")

@@ -11,11 +11,16 @@ from hdetermine.report.rounding import (
     MINUS,
     THIN,
     grouped,
+    two_digits,
     typeset_figure,
     typeset_plus_minus,
     typeset_shorthand,
 )
 
+GREEK = {
+    "alpha": "α", "beta": "β", "gamma": "γ", "delta": "δ", "epsilon": "ε", "kappa": "κ",
+    "lambda": "λ", "mu": "μ", "phi": "φ", "rho": "ρ", "sigma": "σ", "tau": "τ", "theta": "θ",
+}  # fmt: skip
 NONE = "–"
 """What an empty cell shows."""
 
@@ -32,12 +37,15 @@ class Cell:
         The unrounded number as the record holds it (a ratio where the text is in per cent);
         None for words.
     detail : str
-        A second line in smaller type; may be empty.
+        More, in smaller type; may be empty.
+    subscript : str
+        Set below the end of `text`; may be empty.
     """
 
     text: str
     number: float | None = None
     detail: str = ""
+    subscript: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -108,11 +116,20 @@ def words(text: str, detail: str = "", *, longest: int = 300) -> Cell:
     return Cell(plain(text, longest) or NONE, None, plain(detail, longest))
 
 
+def symbol(text: str) -> Cell:
+    """A symbol in plain characters, ``delta_r``: Greek letters by name, one subscript."""
+    name, _, below = plain(text, 40).partition("_")
+    letter = GREEK.get(name, name) or NONE
+    return Cell(letter, None, "", GREEK.get(below, below))
+
+
 def with_uncertainty(value: float, uncertainty: float, unit: str = "") -> Cell:
     """Value with its uncertainty in parentheses, ``6.626(30) × 10⁻³⁴ J s``."""
     if not (math.isfinite(value) and math.isfinite(uncertainty)):
         return Cell(NONE)
-    return Cell(united(typeset_shorthand(value, uncertainty), unit), value)
+    # Unbroken: a narrow column must not part a number from its power of ten.
+    text = typeset_shorthand(value, uncertainty).replace(" ", "\N{NO-BREAK SPACE}")
+    return Cell(united(text, unit), value)
 
 
 def plus_minus(value: float, uncertainty: float, unit: str = "") -> Cell:
@@ -144,6 +161,26 @@ def decimals(number: float | None, places: int, unit: str = "", *, signed: bool 
     elif signed and number > 0.0:
         text = f"+{text}"
     return Cell(united(text, unit), number)
+
+
+def percent(share: float, places: int = 2) -> Cell:
+    """A signed ratio in per cent."""
+    return Cell(decimals(100.0 * share, places, "%", signed=True).text, share)
+
+
+def in_units(value: float, uncertainty: float, exponent: int) -> Cell:
+    """Value with its uncertainty in parentheses, in units of a power of ten."""
+    if not (math.isfinite(value) and math.isfinite(uncertainty)):
+        return Cell(NONE)
+    parts = two_digits(value, uncertainty, exponent=exponent)
+    last = f"({parts.last_digits})" if parts.last_digits else ""
+    return Cell(grouped(parts.value) + last, value)
+
+
+def interval(ends: tuple[float, float], uncertainty: float, exponent: int) -> Cell:
+    """Both ends of an interval, rounded as a value with that uncertainty would be."""
+    low, high = (grouped(two_digits(end, uncertainty, exponent=exponent).value) for end in ends)
+    return Cell(f"{low} to {high}", ends[0])
 
 
 def united(text: str, unit: str) -> str:
