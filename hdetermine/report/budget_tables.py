@@ -42,8 +42,9 @@ def floor_line(study: BudgetStudy) -> str:
     """What perfect counting statistics would leave of U."""
     unit, now = study.budget.unit, study.budget.expanded_uncertainty
     gain = 100.0 * (1.0 - study.counting_floor / now) if now > 0.0 else 0.0
+    floor = digits(study.counting_floor, 2, unit).text
     return (
-        f"With perfect counting statistics U stays at {digits(study.counting_floor, 2, unit).text}, "
+        f"With perfect counting statistics U stays at {floor}, "
         f"{decimals(gain, 1, '%').text} below the {digits(now, 2, unit).text} of today."
     )
 
