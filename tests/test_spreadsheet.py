@@ -185,6 +185,21 @@ def test_ods_that_would_exhaust_the_machine(tmp_path, old, new):
     assert "cells" in sentence or "addresses" in sentence
 
 
+def test_ods_with_many_sheets_of_repeated_rows(tmp_path):
+    """A hundred sheets, each within the limit, took 1.7 GB together."""
+    data = ods(Run=ROWS)
+    content = zipfile.ZipFile(io.BytesIO(data)).read("content.xml").decode()
+    more = "".join(
+        f'<table:table table:name="t{i}"><table:table-row table:number-rows-repeated="100000">'
+        '<table:table-cell office:value-type="float" office:value="1"/></table:table-row>'
+        "</table:table>"
+        for i in range(99)
+    )
+    content = content.replace("</office:spreadsheet>", more + "</office:spreadsheet>")
+    sentence = refusal(tmp_path, with_part(data, "content.xml", content.encode()))
+    assert "cells in all its sheets" in sentence
+
+
 def test_ods_with_the_usual_empty_repeats(tmp_path):
     """Spreadsheet programs fill the sheet up with repeated empty cells and rows."""
     data = ods(Run=ROWS)

@@ -54,10 +54,11 @@ def measured_archive(data: bytes, where: str) -> bytes:
     """
     parts = _unpacked(data, where)
     packed = io.BytesIO()
+    cells = 0
     with zipfile.ZipFile(packed, "w", zipfile.ZIP_STORED) as archive:
         for name, content in parts.items():
             if name.endswith(_PARTS):
-                _measure(content, where)
+                cells = _measure(content, where, cells)
             elif name != "mimetype":
                 continue
             archive.writestr(zipfile.ZipInfo(name), content)
@@ -90,10 +91,15 @@ def _unpacked(data: bytes, where: str) -> dict[str, bytes]:
 
 
 class _Extent:
-    """How far the cells of one sheet reach, whichever of the two formats it is in."""
+    """How far the cells of the sheets reach, whichever of the two formats they are in.
 
-    def __init__(self, where: str) -> None:
+    `before` counts the cells of the rectangles of all sheets that are done with; `area` adds the
+    one at hand.
+    """
+
+    def __init__(self, where: str, before: int) -> None:
         self.where = where
+        self.before = before
         self.depth = 0
         self.cells = 0
         self.rows = self.columns = 0
@@ -101,6 +107,10 @@ class _Extent:
         self.repeat_row = self.repeat_column = 1
         self.row_width = 0
         self.filled = False
+
+    @property
+    def area(self) -> int:
+        return self.before + self.rows * self.columns
 
     def start(self, tag: str, attributes: dict[str, str]) -> None:
         self.depth += 1
@@ -143,6 +153,7 @@ class _Extent:
 
     # ods: rows and cells with repeat counts
     def _ods_table(self, _attributes: dict[str, str]) -> None:
+        self.before = self.area
         self.row = self.rows = self.columns = 0
 
     def _ods_row(self, attributes: dict[str, str]) -> None:
@@ -174,7 +185,7 @@ class _Extent:
 
     def _reach(self, row: int, column: int) -> None:
         self.rows, self.columns = max(self.rows, row), max(self.columns, column)
-        check_limit(self.rows * self.columns, MAX_CELLS, self.where, "cells in one sheet")
+        check_limit(self.area, MAX_CELLS, self.where, "cells in all its sheets")
 
     def _number(self, text: str | None, default: int, largest: int) -> int:
         if text is None:
@@ -209,8 +220,9 @@ class _Extent:
     }
 
 
-def _measure(content: bytes, where: str) -> None:
-    extent = _Extent(where)
+def _measure(content: bytes, where: str, before: int) -> int:
+    """Walk through one part; returns the cells of it and of those before it."""
+    extent = _Extent(where, before)
 
     def refuse(*_declaration: object) -> None:
         raise InputError(
@@ -229,3 +241,4 @@ def _measure(content: bytes, where: str) -> None:
         raise InputError(
             f"{where}: this spreadsheet is damaged inside; open it and save it again."
         ) from None
+    return extent.area

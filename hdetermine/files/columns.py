@@ -192,5 +192,5 @@ def _named(table: Table, wanted: str | int, key: str, sheet: str) -> Column:
 
 
 def _nearest(wanted: str, known: Iterable[str]) -> str:
-    close = difflib.get_close_matches(wanted, list(known), n=1, cutoff=0.6)
+    close = difflib.get_close_matches(wanted[:80], [name[:80] for name in known], n=1, cutoff=0.6)
     return f" (did you mean {quoted(close[0])}?)" if close else ""

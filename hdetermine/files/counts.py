@@ -150,10 +150,10 @@ def without_dropouts(
     keep = np.ones(counts.size, dtype=bool)
     least = -math.log(_DROPOUT_CHANCE)
     remarks: list[str] = []
-    for i in np.flatnonzero(counts == 0):
+    middle = counts[1:-1] == 0
+    isolated = 1 + np.flatnonzero(middle & (counts[:-2] > 0) & (counts[2:] > 0))
+    for i in isolated:
         below, above = counts[max(0, i - 3) : i], counts[i + 1 : i + 4]
-        if not below.size or not above.size:
-            continue
         expected = min(float(np.mean(below)), float(np.mean(above)))
         if expected > least and min(below[-1], above[0]) >= expected / 3.0:
             keep[i] = False

@@ -17,6 +17,7 @@ _SHAPE = re.compile(
     r"[+-]?(?:[0-9]+[.,]?[0-9]*|[.,][0-9]+"
     rf"|[0-9]{{1,3}}(?:[.,{_SPACES}][0-9]{{3}})+(?:[.,][0-9]*)?)(?:[eE][+-]?[0-9]{{1,4}})?"
 )
+_PLAIN = re.compile(r"[+-]?[0-9]{1,40}(?:\.[0-9]{0,40})?")
 _LONGEST = 60
 
 
@@ -52,12 +53,14 @@ class Marks:
     def note(self, cells: Iterable[str], below_thousand: bool = False) -> None:
         """Look at cells; `below_thousand` if none of them can reach 1000 (an angle)."""
         for cell in cells:
+            points, commas = cell.count("."), cell.count(",")
+            if not points and not commas:
+                continue
+            if points + commas == 1 and ("point" if points else "comma") in self.certain:
+                continue
             if not looks_numeric(cell):
                 continue  # refused later, by its place
             text = tidy(cell).lstrip("+-")
-            points, commas = text.count("."), text.count(",")
-            if not points and not commas:
-                continue
             if points + commas > 1:
                 self.grouped = self.grouped or cell
                 continue
@@ -105,11 +108,13 @@ def parse_numeral(text: str, decimal: Decimal) -> float:
     ValueError
         If it is not one number.
     """
+    mark, other = (".", ",") if decimal == "point" else (",", ".")
+    if other not in text and _PLAIN.fullmatch(plain := text.replace(mark, ".")):
+        return float(plain)
     number = tidy(text)
     if not looks_numeric(number):
         raise ValueError("not a number")
     number = _SPACED.sub(lambda match: re.sub(rf"[{_SPACES}]", "", match[0]), number)
-    mark, other = (".", ",") if decimal == "point" else (",", ".")
     whole, found, rest = number.partition(mark)
     if other in whole:
         if not re.fullmatch(rf"[+-]?[0-9]{{1,3}}(?:{re.escape(other)}[0-9]{{3}})+", whole):

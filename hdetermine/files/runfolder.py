@@ -10,9 +10,11 @@ from dataclasses import dataclass, field
 from pathlib import Path
 
 from hdetermine.errors import InputError
-from hdetermine.files.limits import MAX_FOLDER_ENTRIES
 from hdetermine.files.plaintext import quoted
 from hdetermine.records.run import InputFile
+
+_NEAR_NAMES = 500
+"""Names of a folder among which a misspelt one is looked for."""
 
 
 def read_bytes(path: Path, where: str, limit: int) -> bytes:
@@ -57,10 +59,10 @@ def read_bytes(path: Path, where: str, limit: int) -> bytes:
 
 def _near_file(path: Path) -> str:
     try:
-        names = sorted(entry.name for entry in path.parent.iterdir())[:MAX_FOLDER_ENTRIES]
+        names = sorted(entry.name[:80] for entry in path.parent.iterdir())[:_NEAR_NAMES]
     except (OSError, ValueError):
         return ""
-    close = difflib.get_close_matches(path.name[:200], names, n=1, cutoff=0.6)
+    close = difflib.get_close_matches(path.name[:80], names, n=1, cutoff=0.6)
     return f" (did you mean {quoted(close[0])}?)" if close else ""
 
 

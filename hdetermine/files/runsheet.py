@@ -92,11 +92,9 @@ def parse_sheet(data: bytes, where: str) -> dict[str, Any]:
         raise InputError(
             f"{where}: a run sheet must be text in UTF-8; save it in that encoding."
         ) from None
-    depth = 0
     for number, line in enumerate(text.split("\n"), start=1):
         check_limit(len(line), MAX_LINE_CHARACTERS, f"{where}, line {number}", "characters")
         check_limit(line.count("."), 1000, f"{where}, line {number}", "dots")
-        depth = max(depth, line.count("[") + line.count("{"))
     try:
         content = tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:

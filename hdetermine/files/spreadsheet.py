@@ -88,7 +88,7 @@ def choose_sheet(
     if wanted is not None:
         if wanted in sheets:
             return wanted
-        close = difflib.get_close_matches(wanted, list(sheets), n=1, cutoff=0.6)
+        close = difflib.get_close_matches(wanted[:80], [n[:80] for n in sheets], n=1, cutoff=0.6)
         hint = f" (did you mean {quoted(close[0])}?)" if close else ""
         raise InputError(
             f"{where}: it has no sheet {quoted(wanted)}{hint}; its sheets with content are "

@@ -10,13 +10,21 @@ from collections import Counter
 from dataclasses import dataclass
 
 from hdetermine.errors import InputError
-from hdetermine.files.limits import MAX_COLUMNS, MAX_LINE_CHARACTERS, MAX_ROWS, check_limit
+from hdetermine.files.limits import (
+    MAX_CELLS,
+    MAX_COLUMNS,
+    MAX_LINE_CHARACTERS,
+    MAX_ROWS,
+    check_limit,
+)
 from hdetermine.files.numerals import looks_numeric
 
 _COMMENTS = ("#", "%", "!", "//")
 _BLANKS = re.compile(r"[ \t\u00a0]+")
 _WIDE_BLANKS = re.compile(r"\t+| {2,}")
 _NUMBER_LINE = re.compile(r"[0-9.,;|'\"eE+\-\u2212°\s\u00a0\u202f\u2009]*$")
+_STRANGE = [chr(i) for i in (*range(32), *range(127, 160)) if chr(i) not in "\t\n\r\f\v\x1a"]
+_SAMPLE = 1000
 _FAMILIES = {
     b"\x89PNG": "a picture",
     b"\xff\xd8\xff": "a picture",
@@ -81,8 +89,7 @@ def decode(data: bytes, where: str) -> str:
             f"{where}: this is {family} and not a table; export the counts as CSV or xlsx."
         )
     text = _decoded(data)
-    strange = sum(unicodedata.category(c) == "Cc" and c not in "\t\n\r\f\v\x1a" for c in text)
-    if text is None or strange > 0.05 * len(text):
+    if sum(map(text.count, _STRANGE)) > 0.05 * len(text):
         raise InputError(
             f"{where}: this is neither text nor a spreadsheet; export the counts as CSV or xlsx."
         )
@@ -125,7 +132,8 @@ def split_lines(text: str, where: str) -> TextLines:
     ]
     if not candidates:
         raise InputError(f"{where}: {_no_numbers(text)}")
-    separator = _separator([line for _, line in candidates])
+    every = 1 + len(candidates) // _SAMPLE
+    separator = _separator([line for _, line in candidates[::every]])
     if separator is None and all(looks_numeric(line) for _, line in candidates):
         raise InputError(
             f"{where}: it has only one column of numbers; a scan needs an angle and a count in "
@@ -136,10 +144,10 @@ def split_lines(text: str, where: str) -> TextLines:
             f"{where}: no separator (tab, semicolon, comma or blanks) splits its lines into "
             "columns of numbers; export it with semicolons or tabs between the columns."
         )
-    check_limit(len(lines), MAX_ROWS, where, "lines")
-    split = [(number, line, _cells(line, separator)) for number, line in lines]
     raw_width = _commonest([len(_cells(line, separator)) for _, line in candidates])
     check_limit(raw_width, MAX_COLUMNS, where, "columns")
+    check_limit(raw_width * len(lines), MAX_CELLS, where, "cells")
+    split = [(number, line, _cells(line, separator)) for number, line in lines]
     # A separator at the end of every line makes an empty last column: it is none.
     width = max(_filled_width(cells) for *_, cells in split if len(cells) == raw_width)
     result = TextLines([], [], width)
@@ -189,6 +197,8 @@ def comment_cells(line: str, width: int) -> list[str] | None:
 def _logical_lines(text: str, where: str) -> list[tuple[int, str]]:
     """Lines that are not blank, with their numbers; quoted cells may run over line ends."""
     lines: list[tuple[int, str]] = []
+    ends = text.count("\n") + text.count("\r") - text.count("\r\n")
+    check_limit(ends, MAX_ROWS, where, "lines")
     for number, line in enumerate(re.split(r"\r\n|\n|\r", text), start=1):
         if len(line) > MAX_LINE_CHARACTERS:
             raise InputError(
