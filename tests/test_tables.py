@@ -37,6 +37,7 @@ TEXTS = {
     "title with separators": "Bench 3;\ntheta;counts\n5.0;3\n5.1;0\n5.2;12\n",
     "units in a second line": "theta;N\n°;counts\n5.0;3\n5.1;0\n5.2;12\n",
     "three header lines": "Lauf;Rohr\nWinkel θ;Impulse\nin Grad;je Schritt\n5,0;3\n5,1;0\n5,2;12\n",
+    "run data above": "Rate;1\nAngle from;5\nU;20 kV\ntheta;counts\n5.0;3\n5.1;0\n5.2;12\n",
     "index and spread": "No.;theta;counts;error\n1;5.0;3;1.7\n2;5.1;0;1\n3;5.2;12;3.5\n",
     "exponents": "theta;counts\n5.0e0;3\n51E-1;0\n.52e1;1.2e1\n",
     "degree signs": "theta;counts\n5.0°;3\n5.1 °;0\n5.2°;12\n",

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import difflib
 from collections.abc import Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from hdetermine.errors import InputError
 from hdetermine.files.headers import ABSCISSA_ROLES, ORDINATE_ROLES, Meaning, meaning_of, normalise
@@ -67,7 +67,7 @@ def choose_columns(table: Table, entry: ScanPart, sheet: str) -> Choice:
         raise InputError(
             f"{table.where}: it has only one column; a scan needs an angle and a count in each row."
         )
-    meanings = {column.number: meaning_of(column.header) for column in table.columns}
+    meanings = column_meanings(table)
     abscissa = _abscissa(table, entry, meanings, sheet)
     ordinate = _ordinate(table, entry, meanings, abscissa, sheet)
     dwells = [c for c in table.columns if meanings[c.number].role == "dwell"]
@@ -106,6 +106,25 @@ def choose_columns(table: Table, entry: ScanPart, sheet: str) -> Choice:
         ordinate_kind=ordinate_kind,
         remarks=tuple(remarks),
     )
+
+
+def column_meanings(table: Table) -> dict[int, Meaning]:
+    """What each column holds, by its number.
+
+    Of several header lines no more are used, from the lowest up, than it takes to find an abscissa
+    and an ordinate: what stands above may be about the run as a whole. A tube voltage counts from
+    any line.
+    """
+    whole = {column.number: meaning_of(column.header) for column in table.columns}
+    for lines in range(1, max((len(column.parts) for column in table.columns), default=0)):
+        low = {c.number: meaning_of(" ".join(c.parts[-lines:])) for c in table.columns}
+        roles = {meaning.role for meaning in low.values()}
+        if roles & set(ABSCISSA_ROLES) and roles & {"counts", "rate"}:
+            return {
+                number: replace(meaning, voltage_kV=whole[number].voltage_kV)
+                for number, meaning in low.items()
+            }
+    return whole
 
 
 def _abscissa(table: Table, entry: ScanPart, meanings: dict[int, Meaning], sheet: str) -> Column:

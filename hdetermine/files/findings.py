@@ -8,11 +8,11 @@ from dataclasses import dataclass, field
 from pathlib import Path
 
 from hdetermine.errors import InputError
+from hdetermine.files.columns import column_meanings
 from hdetermine.files.headers import (
     ABSCISSA_ROLES,
     ORDINATE_ROLES,
     Meaning,
-    meaning_of,
     normalise,
     voltage_in,
 )
@@ -160,7 +160,7 @@ def _sort_key(voltage: Finding) -> float:
 
 
 def _scans_of(name: str, sheet: str | None, table: Table) -> Iterator[FoundScan]:
-    meanings = {column.number: meaning_of(column.header) for column in table.columns}
+    meanings = column_meanings(table)
     abscissa, settings = _abscissa(table, meanings)
     if sheet is not None:
         settings["sheet"] = Finding(sheet, is_guess=False)

@@ -41,7 +41,7 @@ _VOLTAGE = re.compile(
     r"|(?<![a-z])u[a-z]?\s*=\s*(\d{1,3}(?:[.,]\d{1,3})?)(?!\s*v)(?![\d.,])"
 )
 _TWO_THETA = re.compile(
-    r"(?<!\d)2\s*[*·x]?\s*(?:θ|theta\b|th\b|β|beta\b)|two\s*theta|double\s+angle"
+    r"(?<!\d)2\s*[-*·x]?\s*(?:θ|theta\b|th\b|β|beta\b)|two[\s-]*theta|double\s+angle"
     r"|(?:counter|detector|scattering|deflection)\s+angle"
     r"|(?:detektor|streu|ablenk|zahlrohr|zaehlrohr)winkel"
     r"|angle\s+de\s+(?:diffusion|deviation)|angulo\s+de\s+(?:dispersion|dispersao|desviacion|desvio|espalhamento)"
@@ -60,6 +60,8 @@ _DWELL = re.compile(
     r"|time\s+per\s+(?:step|point)|messzeit|torzeit|temps\s+de\s+(?:comptage|mesure|pose)"
     r"|tiempo\s+de\s+(?:conteo|medida|integracion)|tempo\s+de\s+(?:contagem|medida|integracao)"
 )
+_FUNCTION = re.compile(r"\b(?:sin|cos|tan|ln|log)\b|^\s*1\s*/\s*[a-zλθ]")
+_PER_MINUTE = re.compile(r"(?:/|\bper\b|\bpro\b|\bpor\b|\bpar\b)\s*min|\bcpm\b|\bmin\s*\^?\s*-\s*1")
 _SPREAD = re.compile(
     r"uncertaint|\berrors?\b|\bfehler|unsicherheit|incertitude|incertidumbre|incerteza|\berro\b"
     r"|sigma|σ|±|\+/?-|^\s*[δu]\s*\(|^\s*δ|std\.?\s*dev|\bsqrt|√"
@@ -72,7 +74,7 @@ _RATE = re.compile(
     r"\brates?\b|\bcountrate\b|zahlrate|zaehlrate|impulsrate|pulsrate|\btaux\b|\btasa\b|\btaxa\b"
 )
 _COUNTS = re.compile(
-    r"\bcounts?\b|\bimpulse?\b|\bimp\b|\bpulses?\b|\bevents?\b|ereignisse|impulszahl|zahlimpulse"
+    r"\bcounts?\b|\bcts\b|\bimpulse?\b|\bimp\b|\bpulses?\b|\bevents?\b|ereignisse|impulszahl|zahlimpulse"
     r"|\bcoups?\b|\bimpulsions?\b|\bcuentas?\b|\bconteos?\b|\bpulsos?\b|\bcontagens?\b"
     r"|\bcontagem\b|\bcontas\b|^\s*n\b(?!\s*[°o]\b)"
 )
@@ -134,7 +136,7 @@ def meaning_of(header: str) -> Meaning:
     """
     text = _bare(normalise(header))
     voltage = voltage_in(header)
-    if _SPREAD.search(text):
+    if any(pattern.search(text) for pattern in (_SPREAD, _FUNCTION, _PER_MINUTE)):
         return Meaning("other")
     unit = next((name for name, pattern in _UNITS if pattern.search(text)), "")
     for role, pattern in _ABSCISSAE.items():
