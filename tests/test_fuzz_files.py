@@ -42,7 +42,7 @@ def read_or_refuse(sheet: bytes, table: bytes) -> str:
     with tempfile.TemporaryDirectory() as name:
         folder = write_run(Path(name) / "run", table=table)
         (folder / "run.toml").write_bytes(sheet)
-        began = time.perf_counter()
+        began = time.process_time()
         try:
             run = read_run(folder)
         except InputError as error:
@@ -50,7 +50,7 @@ def read_or_refuse(sheet: bytes, table: bytes) -> str:
             assert_plain(sentence)
             return sentence
         finally:
-            assert time.perf_counter() - began < LONGEST_s
+            assert time.process_time() - began < LONGEST_s
         for scan in run.scans:
             assert scan.reading_deg.size == scan.counts.size == scan.dwell_s.size > 0
             assert np.all(np.diff(scan.reading_deg) > 0)

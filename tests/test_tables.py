@@ -43,6 +43,7 @@ TEXTS = {
     "degree signs": "theta;counts\n5.0°;3\n5.1 °;0\n5.2°;12\n",
     "blank lines": "theta;counts\n\n5.0;3\n\n \n5.1;0\n5.2;12\n\n\n",
     "descending": "theta;counts\n5.2;12\n5.1;0\n5.0;3\n",
+    "rows of nothing but separators": "theta;counts\n;\n5.0;3\n;;\n5.1;0\n5.2;12\n;\n",
     "blank cells at the ends": "theta;counts\n4.9;\n5.0;3\n5.1;0\n5.2;12\n5.3;\n",
     "end-of-file sign": "theta;counts\n5.0;3\n5.1;0\n5.2;12\n\x1a",
 }  # fmt: skip

@@ -74,7 +74,8 @@ _RATE = re.compile(
     r"\brates?\b|\bcountrate\b|zahlrate|zaehlrate|impulsrate|pulsrate|\btaux\b|\btasa\b|\btaxa\b"
 )
 _COUNTS = re.compile(
-    r"\bcounts?\b|\bcts\b|\bimpulse?\b|\bimp\b|\bpulses?\b|\bevents?\b|ereignisse|impulszahl|zahlimpulse"
+    r"\bcounts?\b|\bcts\b|\bimpuls(?:es?|os)?\b|\bimp\b|\bpulses?\b"
+    r"|\bevents?\b|ereignisse|impulszahl|zahlimpulse"
     r"|\bcoups?\b|\bimpulsions?\b|\bcuentas?\b|\bconteos?\b|\bpulsos?\b|\bcontagens?\b"
     r"|\bcontagem\b|\bcontas\b|^\s*n\b(?!\s*[°o]\b)"
 )

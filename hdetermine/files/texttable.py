@@ -155,11 +155,13 @@ def split_lines(text: str, where: str) -> TextLines:
         cells = found
         if separator == " " and len(cells) != width:
             cells = [cell for cell in _WIDE_BLANKS.split(line.strip()) if cell]
+        if not any(cells):
+            continue
         if is_comment(line):
             result.other.append((number, line))
         elif len(cells) in (width, raw_width) and _filled_width(cells) <= width:
             result.rows.append((number, (cells + [""] * width)[:width]))
-        elif any(cells) and all(looks_numeric(cell) for cell in cells if cell):
+        elif all(looks_numeric(cell) for cell in cells if cell):
             result.rows.append((number, cells))
         else:
             result.other.append((number, line))
