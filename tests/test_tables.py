@@ -185,6 +185,7 @@ FAULTS = {
     "angle of 200": ("theta;counts\n5.0;3\n200;1\n", ["line 3, column 1", '"200"', "two_theta"]),
     "2theta of 200": ("2theta;counts\n5.0;3\n200;1\n", ["line 3, column 1", '"200"']),
     "missing count": ("theta;counts\n5.0;3\n5.1;\n5.2;4\n", ["line 3, column 2", "no number"]),
+    "missing first angle": ("theta;counts\n;3\n5.1;3\n5.2;4\n", ["line 2, column 1", "no number"]),
     "missing angle": ("theta;counts\n5.0;3\n;3\n5.2;4\n", ["line 3, column 1", "no number"]),
     "unknown columns": ("a;b\n5.0;3\n5.1;4\n", ['"a", "b"', "abscissa", "run.toml"]),
     "two counts": ("theta;counts;counts\n5.0;3;4\n5.1;4;5\n", ["state column"]),

@@ -9,7 +9,7 @@ from pathlib import Path
 
 from hdetermine.errors import InputError
 from hdetermine.files import defaults
-from hdetermine.files.findings import Finding, Findings, look_through
+from hdetermine.files.findings import Finding, Findings, look_through, own_name
 from hdetermine.files.plaintext import plain_text, quoted
 from hdetermine.files.sheetcheck import PLACEHOLDER
 from hdetermine.physics.crystals import KINDS, find_kind
@@ -60,11 +60,11 @@ def draft_sheet(folder: str | Path) -> str:
     if not findings.scans:
         reason = f" (first trouble: {findings.left_out[0][:-1]})" if findings.left_out else ""
         raise InputError(
-            f"{quoted(path.resolve().name)}: there is no scan table in this folder{reason}; put "
+            f"{quoted(path)}: there is no scan table in this folder{reason}; put "
             "the counts into it as CSV, text, xlsx or ods."
         )
     lines = [_EXPLANATION, "schema = 1", "", "[run]"]
-    lines.append(_line("title", Finding(path.resolve().name, "the folder's name")))
+    lines.append(_line("title", Finding(own_name(path), "the folder's name")))
     lines += ["# date = 2026-01-31", '# operator = ""', '# laboratory = ""', ""]
     lines += _tube(findings)
     lines += _crystal(findings)

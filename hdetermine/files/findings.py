@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import re
 from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass, field
@@ -103,7 +104,7 @@ def look_through(folder: Path) -> Findings:
     run_folder = RunFolder(folder)
     scans: list[FoundScan] = []
     left_out: list[str] = []
-    words: list[str] = [folder.resolve().name]
+    words: list[str] = [own_name(folder)]
     for name in _candidates(folder):
         try:
             if plain_text(name) != name:
@@ -117,10 +118,15 @@ def look_through(folder: Path) -> Findings:
         for sheet, table in tables.items():
             words += [Path(name).stem, *table.titles]
             scans += _scans_of(name, sheet if len(tables) > 1 else None, table)
-    check_limit(len(scans), MAX_SCANS, quoted(folder.name), "scans")
+    check_limit(len(scans), MAX_SCANS, quoted(folder), "scans")
     _tell_apart(scans)
     scans.sort(key=lambda scan: (_sort_key(scan.voltage_kV), scan.file))
     return Findings(tuple(scans), tuple(left_out), tuple(words))
+
+
+def own_name(folder: Path) -> str:
+    """Name of a folder, also where it is given as ``.``."""
+    return plain_text(os.path.basename(os.path.realpath(folder)))
 
 
 def _tell_apart(scans: list[FoundScan]) -> None:
@@ -139,13 +145,13 @@ def _candidates(folder: Path) -> list[str]:
     try:
         entries = sorted(entry.name for entry in folder.iterdir())
     except NotADirectoryError:
-        raise InputError(f"{quoted(folder.name)}: this is a file; name a folder.") from None
+        raise InputError(f"{quoted(folder)}: this is a file; name a folder.") from None
     except (OSError, ValueError):
         raise InputError(
-            f"{quoted(folder.name)}: there is no such folder that can be read; name one with scan "
+            f"{quoted(folder)}: there is no such folder that can be read; name one with scan "
             "tables."
         ) from None
-    check_limit(len(entries), MAX_FOLDER_ENTRIES, quoted(folder.name), "entries of a folder")
+    check_limit(len(entries), MAX_FOLDER_ENTRIES, quoted(folder), "entries of a folder")
     return [
         name
         for name in entries

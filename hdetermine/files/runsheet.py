@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import tomllib
 from collections.abc import Mapping
 from pathlib import Path
@@ -132,9 +133,9 @@ def _depth(value: object) -> int:
 def _sheet_content(folder: RunFolder, sheet: str | Path | None) -> tuple[dict[str, Any], str]:
     if sheet is None:
         path, where = folder.locate(SHEET_NAME, "file", SHEET_NAME), SHEET_NAME
-        if not path.exists():
+        if not os.path.lexists(path):
             raise InputError(
-                f"{quoted(folder.path.name)}: the folder has no {SHEET_NAME}; write one, for "
+                f"{quoted(folder.path)}: the folder has no {SHEET_NAME}; write one, for "
                 "instance with hdetermine draft."
             )
     else:
@@ -146,7 +147,7 @@ def _sheet_content(folder: RunFolder, sheet: str | Path | None) -> tuple[dict[st
 def _truth(folder: RunFolder, sheet: RunSheet) -> Mapping[str, object]:
     """Truth of a simulated run: from the sheet, or from the file beside it."""
     path = folder.locate(TRUTH_NAME, "file", TRUTH_NAME)
-    if sheet.truth or not path.exists():
+    if sheet.truth or not os.path.lexists(path):
         return sheet.truth
     unlisted = RunFolder(folder.path)
     content = parse_sheet(unlisted.read(path, TRUTH_NAME, MAX_SHEET_BYTES), TRUTH_NAME)

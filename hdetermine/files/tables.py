@@ -225,7 +225,10 @@ def _check_header(row: list[Cell], number: int, where: str, spreadsheet: bool) -
         and meaning_of(first).role == "other"
     )
     has_number = any(_is_number(cell) for cell in row)
-    if others and has_number and (_is_number(first) or starts_as_number):
+    if not others:
+        place = _place(where, number, 1 + row.index(None), spreadsheet)
+        raise InputError(f"{place}: there is no number; fill it in or remove the row.")
+    if has_number and (_is_number(first) or starts_as_number):
         place = _place(where, number, others[0] + 1, spreadsheet)
         raise InputError(f"{place}: {quoted(row[others[0]], 40)} is not a number; correct it.")
 
