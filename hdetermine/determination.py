@@ -70,10 +70,10 @@ def determine(
     report("lines", 0, 1)
     scale = angle_scale(run)
     report("lines", 1, 1)
-    scale, cutoffs = find_cutoffs(run, scale, report)
-    if not any(cutoff.used for cutoff in cutoffs):
+    scale, shared, cutoffs = find_cutoffs(run, scale, report)
+    if shared is None or not any(cutoff.used for cutoff in cutoffs):
         raise InputError(_nothing_usable(cutoffs))
-    model = build_model(run.apparatus, scale, cutoffs)
+    model = build_model(run.apparatus, scale, shared, cutoffs)
     model, repeat = learn_repeatability(model)
     before = relate(model, 0.0, repeat)
     model, scatter = add_scatter(model)

@@ -35,7 +35,6 @@ GROUPS: Mapping[str, str] = {
     measurement.WAVELENGTH_SCALE: "reference wavelengths",
     "continuum.smooth_1": "smooth factor of the continuum",
     "continuum.smooth_2": "smooth factor of the continuum",
-    "continuum.smooth_3": "smooth factor of the continuum",
 }
 SCAN_GROUPS: Mapping[str, str] = {
     "counting_deg": "counting statistics",

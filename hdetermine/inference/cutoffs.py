@@ -9,17 +9,16 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
-from hdetermine.inference import measurement as names
 from hdetermine.inference.edgefamily import Family, average, best_start, fit_family, windows
 from hdetermine.inference.edgemodel import (
+    SMOOTH_TERMS,
     EdgeFit,
     EdgeWindow,
     expected_counts,
     likelihood_sides,
-    response_deg,
 )
 from hdetermine.inference.firstfit import Edge, first_fit, first_guesses
-from hdetermine.inference.resolution import common_resolution, resolution_answers
+from hdetermine.inference.shared import SharedTerms, edge_responses, share
 from hdetermine.inference.spacing import crystal_spacing_pm
 from hdetermine.physics.bragg import wavelength_pm
 from hdetermine.records.quantity import Quantity
@@ -30,12 +29,13 @@ from hdetermine.records.scan import Scan
 FloatArray = NDArray[np.float64]
 
 LARGEST_MISFIT = 12.0  # deviance per degree of freedom
+LEAST_WEIGHT = 1e-3  # of a fit whose responses are worth the work
 RESOLUTION_TOLERANCE = 3.0  # in standard uncertainties, between edges and lines
 
 
 def find_cutoffs(
     run: Run, scale: AngleScale, progress: Callable[[str, int, int], None] | None = None
-) -> tuple[AngleScale, tuple[Cutoff, ...]]:
+) -> tuple[AngleScale, SharedTerms | None, tuple[Cutoff, ...]]:
     """Fit the edge of every scan.
 
     Parameters
@@ -51,6 +51,8 @@ def find_cutoffs(
     -------
     scale : AngleScale
         With the resolution that the edges found, where nothing else told it.
+    shared : SharedTerms or None
+        What the edges share; None if no scan is usable.
     cutoffs : tuple of Cutoff
         One a scan, in the order of the run; their total uncertainty is still nan.
     """
@@ -63,77 +65,77 @@ def find_cutoffs(
             refused[scan.name] = outcome
         else:
             edges[scan.name] = outcome
-    scale, edges, answers = _settle_resolution(run, scale, edges)
+    shared = None
+    if edges:
+        scale, shared = _share(run, scale, tuple(edge.fit for edge in edges.values()))
+        edges = {
+            name: replace(edge, given=fit.given, fit=fit)
+            for (name, edge), fit in zip(edges.items(), shared.fits, strict=True)
+        }
     cutoffs = []
     for done, scan in enumerate(run.scans):
-        if scan.name in refused:
+        if scan.name in refused or shared is None:
             cutoffs.append(_refusal(scan, refused[scan.name]))
         else:
-            cutoffs.append(_cutoff(run, scale, edges[scan.name], answers))
+            cutoffs.append(_cutoff(run, scale, edges[scan.name], shared))
         if progress is not None:
             progress("edges", done + 1, len(run.scans))
-    return scale, tuple(cutoffs)
+    return scale, shared, tuple(cutoffs)
 
 
-def _settle_resolution(
-    run: Run, scale: AngleScale, edges: dict[str, Edge]
-) -> tuple[AngleScale, dict[str, Edge], dict[str, float]]:
-    """Decide which width the edges are fitted with, and how it answers to the other inputs."""
-    if not edges:
-        return scale, edges, {}
+def _share(
+    run: Run, scale: AngleScale, fits: tuple[EdgeFit, ...]
+) -> tuple[AngleScale, SharedTerms]:
+    """Find what the edges share, and decide whose width they are fitted with."""
     stated = scale.resolution
-    fits = tuple(edge.fit for edge in edges.values())
-    if scale.resolution_from == "lines":
-        free, refitted = common_resolution(fits, replace(stated, standard_uncertainty=math.inf))
-        answers = resolution_answers(refitted, free)
-        spread = sum(
-            (answers.get(quantity.name, 0.0) * quantity.standard_uncertainty) ** 2
-            for quantity in (*run.apparatus.quantities(), scale.kernel)
-        )
-        u = math.hypot(_likelihood_u(fits, refitted, free, stated), math.sqrt(spread))
-        pull = (free.value - stated.value) / math.hypot(u, stated.standard_uncertainty)
-        scale = replace(
-            scale, edge_resolution_deg=free.value, edge_resolution_u_deg=u, edge_pull=pull
-        )
-        if abs(pull) < RESOLUTION_TOLERANCE:
-            return scale, edges, {}
-        remark = (
-            f"the edges are smeared over {free.value:.2f}°, the lines over {stated.value:.2f}°; "
-            "the edges were fitted with their own width."
-        )
-        scale = replace(
-            scale,
-            resolution=free,
-            resolution_from="edges, against the lines",
-            remarks=(*scale.remarks, remark),
-        )
-    else:
-        free, refitted = common_resolution(fits, stated)
-        answers = resolution_answers(refitted, free)
+    if scale.resolution_from != "lines":
         unknown = math.isinf(stated.standard_uncertainty)
+        shared = share(fits, stated, width_free=True)
         scale = replace(
             scale,
-            resolution=free,
+            resolution=shared.inputs[0],
             resolution_from="edges" if unknown else "run sheet and edges",
         )
-    moved = {
-        name: replace(edge, given=fit.given, fit=fit)
-        for (name, edge), fit in zip(edges.items(), refitted, strict=True)
-    }
-    return scale, moved, answers
+        return scale, shared
+    held = share(fits, stated, width_free=False)
+    loose = replace(stated, standard_uncertainty=math.inf)
+    free = share(held.fits, loose, width_free=True)
+    spread = sum(
+        (float(free.answers[quantity.name][0]) * quantity.standard_uncertainty) ** 2
+        for quantity in (*run.apparatus.quantities(), scale.kernel)
+        if quantity.name in free.answers
+    )
+    width = free.inputs[0]
+    u = math.hypot(_likelihood_u(held, free, stated), math.sqrt(spread))
+    pull = (width.value - stated.value) / math.hypot(u, stated.standard_uncertainty)
+    scale = replace(scale, edge_resolution_deg=width.value, edge_resolution_u_deg=u, edge_pull=pull)
+    if abs(pull) < RESOLUTION_TOLERANCE:
+        return scale, held
+    remark = (
+        f"the edges are smeared over {width.value:.2f}°, the lines over {stated.value:.2f}°; "
+        "the edges were fitted with their own width."
+    )
+    return (
+        replace(
+            scale,
+            resolution=width,
+            resolution_from="edges, against the lines",
+            remarks=(*scale.remarks, remark),
+        ),
+        free,
+    )
 
 
-def _likelihood_u(
-    held: tuple[EdgeFit, ...], free: tuple[EdgeFit, ...], found: Quantity, stated: Quantity
-) -> float:
+def _likelihood_u(held: SharedTerms, free: SharedTerms, stated: Quantity) -> float:
     """Uncertainty of the edges' own width: not below what the fall of the deviance supports."""
     fall = sum(
         before.maximum.deviance + before.maximum.penalty
         - after.maximum.deviance - after.maximum.penalty
-        for before, after in zip(held, free, strict=True)
+        for before, after in zip(held.fits, free.fits, strict=True)
     )  # fmt: skip
-    supported = abs(found.value - stated.value) / math.sqrt(max(fall, 1e-6))
-    return max(found.standard_uncertainty, supported)
+    width = free.inputs[0]
+    supported = abs(width.value - stated.value) / math.sqrt(max(fall, 1e-6))
+    return max(width.standard_uncertainty, supported)
 
 
 def _refusal(scan: Scan, reason: str) -> Cutoff:
@@ -156,9 +158,13 @@ def _refusal(scan: Scan, reason: str) -> Cutoff:
     )
 
 
-def _cutoff(run: Run, scale: AngleScale, edge: Edge, answers: dict[str, float]) -> Cutoff:
+def _cutoff(run: Run, scale: AngleScale, edge: Edge, shared: SharedTerms) -> Cutoff:
     scan, given = edge.scan, edge.given
-    members = tuple(windows(scan, edge.points, edge.fit.reading_deg, given, edge.obstacles))
+    smooth = (edge.fit.window.smooth_mean, edge.fit.window.smooth_u)
+    members = tuple(
+        replace(window, smooth_mean=smooth[0], smooth_u=smooth[1])
+        for window in windows(scan, edge.points, edge.fit.reading_deg, given, edge.obstacles)
+    )
     family = fit_family(members, edge.fit, given)
     if family is None:
         return _refusal(scan, "the fit did not converge")
@@ -210,7 +216,7 @@ def _cutoff(run: Run, scale: AngleScale, edge: Edge, answers: dict[str, float]) 
             for fit, weight in zip(family.fits, family.weights, strict=True)
         ),
         fixed_window=None if fixed is None else _window_fit(fixed, 1.0),
-        responses_deg=_responses(family, answers),
+        responses_deg=_responses(family, shared),
         curve=_curve(scan, family.heaviest),
         remarks=tuple(remarks),
     )
@@ -224,7 +230,13 @@ def _fixed_window(scan: Scan, edge: Edge) -> EdgeFit | None:
     high = scan.fit_to_deg if scan.fit_to_deg is not None else edge.fit.window.reading_deg[-1]
     take = edge.points & (scan.reading_deg >= low - 1e-9) & (scan.reading_deg <= high + 1e-9)
     window = EdgeWindow(
-        scan.reading_deg[take], scan.counts[take].astype(float), scan.dwell_s[take], 1, 2
+        scan.reading_deg[take],
+        scan.counts[take].astype(float),
+        scan.dwell_s[take],
+        2,
+        (),
+        edge.fit.window.smooth_mean,
+        edge.fit.window.smooth_u,
     )
     if window.counts.size < window.parameters + 2:
         return None
@@ -238,7 +250,7 @@ def _window_fit(fit: EdgeFit, weight: float) -> WindowFit:
         from_deg=float(fit.window.reading_deg[0]),
         to_deg=float(fit.window.reading_deg[-1]),
         background_terms=fit.window.background_terms,
-        continuum_terms=fit.window.continuum_terms,
+        continuum_terms=SMOOTH_TERMS,
         lines_modelled=len(fit.window.lines),
         reading_deg=fit.reading_deg,
         reading_u_deg=fit.reading_u_deg,
@@ -248,36 +260,14 @@ def _window_fit(fit: EdgeFit, weight: float) -> WindowFit:
     )
 
 
-# Input, field of `Surroundings.changed`, step of the derivative.
-RESPONDING: tuple[tuple[str, str, float], ...] = (
-    (names.ZERO, "zero_deg", 1e-3),
-    (names.RESOLUTION, "resolution_deg", 1e-3),
-    (names.KERNEL, "triangular_fraction", 1e-2),
-    (names.EXCESS, "excess", 1e-2),
-    (names.EXCESS_ENERGY, "excess_energy_keV", 1e-2),
-    (names.DEAD_TIME, "dead_time_us", 1.0),
-)
-
-
-def _responses(family: Family, answers: dict[str, float]) -> dict[str, float]:
-    """Change of the averaged cutoff per unit of each input that the fits took as given."""
+def _responses(family: Family, shared: SharedTerms) -> dict[str, float]:
+    """Change of the averaged cutoff per unit of each input, degrees."""
     responses: dict[str, float] = {}
-    for name, attribute, step in RESPONDING:
-        total = 0.0
-        for fit, weight in zip(family.fits, family.weights, strict=True):
-            if weight < 1e-3:
-                continue
-            value = {
-                "resolution_deg": fit.given.kernel.fwhm_deg,
-                "triangular_fraction": fit.given.kernel.triangular_fraction,
-            }.get(attribute)
-            value = getattr(fit.given, attribute) if value is None else value
-            changed = fit.given.changed(**{attribute: value + step})
-            total += float(weight) * response_deg(fit, changed, step)
-        responses[name] = total
-    # A resolution found from the edges moves with the other inputs.
-    for name, answer in answers.items():
-        responses[name] = responses.get(name, 0.0) + responses[names.RESOLUTION] * answer
+    for fit, weight in zip(family.fits, family.weights, strict=True):
+        if weight < LEAST_WEIGHT:
+            continue
+        for name, response in edge_responses(fit, shared).items():
+            responses[name] = responses.get(name, 0.0) + float(weight) * response
     return responses
 
 
@@ -295,7 +285,7 @@ def _curve(scan: Scan, fit: EdgeFit) -> FittedCurve:
     dark = fit.maximum.parameters.copy()
     dark[1] = -60.0
     for i in range(len(window.lines)):
-        dark[2 + window.continuum_terms + window.background_terms + 2 * i] = -60.0
+        dark[2 + SMOOTH_TERMS + window.background_terms + 2 * i] = -60.0
     background[where] = expected_counts(window, dark, fit.given)[0]
     return FittedCurve(
         reading_deg=readings,

@@ -1,8 +1,8 @@
 """A family of fits around one edge, and their average.
 
 No single window is right: a short one lacks leverage, a long one trusts the smooth factor too
-far. Every member of the family (lower end, upper end, terms of background and continuum, a line
-modelled or kept out) is fitted, and the cutoffs are averaged with weights exp(-A/2), where
+far. Every member of the family (lower end, upper end, terms of the background, a line modelled or
+kept out) is fitted, and the cutoffs are averaged with weights exp(-A/2), where
 
     A = deviance + 2 (parameters) + 2 (points left out)
 
@@ -25,7 +25,6 @@ from hdetermine.records.scan import Scan
 FloatArray = NDArray[np.float64]
 
 _SPANS = (0.12, 0.2, 0.3, 0.45)  # upper end: wavelength beyond the cutoff, relative
-_LONG_SPAN = 0.16  # from here on the smooth factor has a second term
 _DEPTHS_WIDTHS = (4.0, 9.0)  # lower end, in resolution widths below the cutoff
 _DEPTHS_STEPS = (8.0, 18.0)  # ... but at least so many steps
 LEAST_BELOW = 3
@@ -116,27 +115,23 @@ def windows(
             if end > obstacle.to_deg:
                 ends[round(end, 6)] = tuple(templates)
                 break
-    seen: set[tuple[int, int, int, int, int]] = set()
+    seen: set[tuple[int, int, int, int]] = set()
     for end, lines in ends.items():
-        span = math.sin(math.radians(end - given.zero_deg))
-        span = span / math.sin(math.radians(edge_deg - given.zero_deg)) - 1.0
         for in_widths, in_steps in zip(_DEPTHS_WIDTHS, _DEPTHS_STEPS, strict=True):
             start = edge_deg - max(in_widths * width, in_steps * step)
             take = points & (scan.reading_deg >= start - 1e-9) & (scan.reading_deg <= end + 1e-9)
             readings = scan.reading_deg[take]
             if not _enough(readings, edge_deg, width):
                 continue
-            terms = 2 if span > _LONG_SPAN else 1
             for background in (1, 2):
                 window = EdgeWindow(
                     readings,
                     scan.counts[take].astype(float),
                     scan.dwell_s[take],
-                    terms,
                     background,
                     lines,
                 )
-                key = (int(np.argmax(take)), readings.size, terms, background, len(lines))
+                key = (int(np.argmax(take)), readings.size, background, len(lines))
                 if key in seen or readings.size - window.parameters < _LEAST_FREEDOM:
                     continue
                 seen.add(key)
@@ -157,7 +152,7 @@ def first_parameters(window: EdgeWindow, edge_deg: float, given: Surroundings) -
     height = max(float(rate.max()) - floor, floor)
     reach = math.sin(math.radians(window.reading_deg[-1] - given.zero_deg))
     x = reach / math.sin(math.radians(edge_deg - given.zero_deg)) - 1.0
-    start = [edge_deg, math.log(height / max(x, 0.02)), *([0.0] * window.continuum_terms)]
+    start = [edge_deg, math.log(height / max(x, 0.02)), *window.smooth_mean]
     start += [math.log(floor), *([0.0] * (window.background_terms - 1))]
     for _ in window.lines:
         start += [math.log(height * given.kernel.fwhm_deg), 0.0]

@@ -5,9 +5,9 @@ The expected count of a point is
     t rec( B(theta) + int K(theta - theta') C(theta') dtheta' + lines ),
 
 with rec the dead time, B = exp(b0 + b1 s) a sloping background, K the smearing kernel and
-C = exp(a0 + a1 x + a2 x^2) cos(theta') f(x) the continuum above its limit, x = lambda/lambda_min
-- 1 and f the shape of `physics.continuum`. The fit maximises the Poisson likelihood by Fisher
-scoring (Cash 1979). Weak priors keep what the data do not see within reason; they are stated
+C = exp(a0 + a1 L + a2 L^2) cos(theta') f(x) the continuum above its limit, x = lambda/lambda_min
+- 1, L = ln(1 + x), and f the shape of `physics.continuum`. The fit maximises the likelihood by Fisher
+scoring (`scoring`). Weak priors keep what the data do not see within reason; they are stated
 beside the numbers below.
 """
 
@@ -27,11 +27,15 @@ from hdetermine.records.apparatus import DeadTimeModel
 FloatArray = NDArray[np.float64]
 
 # Weak priors (standard deviations): the background changes by less than exp(3) from end to end
-# of the window; the smooth factor by less than exp(10 x), exp(20 x^2); a line stands within
-# 0.02 degrees of where the angle scale puts it. The background amplitude b has the prior
-# b^(0.1 - 1): as good as flat in its logarithm, but a background without counts stays defined.
+# of the window; a line stands within 0.02 degrees of where the angle scale puts it. The amplitude
+# b of the background has the prior b^(0.1 - 1): as good as flat in its logarithm, but a background
+# without counts stays defined.
 _BACKGROUND_SLOPE_U = 1.5
-_SMOOTH_U = (10.0, 20.0)
+SMOOTH_TERMS = 2
+# What transmission, crystal and counter do together is close to a power of the wavelength: the
+# crystal reflects as its square, thin counters absorb as its cube, windows and air the other way.
+SMOOTH_MEAN = (1.0, 0.0)
+SMOOTH_U = (3.0, 3.0)
 _LINE_SHIFT_U_DEG = 0.02
 _BACKGROUND_POWER = 0.1
 
@@ -97,23 +101,26 @@ class EdgeWindow:
     ----------
     reading_deg, counts, dwell_s : ndarray, shape (n,)
         The points.
-    continuum_terms, background_terms : int
-        0 to 2 terms of the smooth factor; 1 or 2 of the background.
+    background_terms : int
+        1 or 2 terms of the background.
     lines : tuple of LineTemplate
         Lines modelled inside the window.
+    smooth_mean, smooth_u : (float, float)
+        Prior of the two terms of the smooth factor: expectation and standard deviation.
     """
 
     reading_deg: FloatArray
     counts: FloatArray
     dwell_s: FloatArray
-    continuum_terms: int
     background_terms: int
     lines: tuple[LineTemplate, ...] = ()
+    smooth_mean: tuple[float, float] = SMOOTH_MEAN
+    smooth_u: tuple[float, float] = SMOOTH_U
 
     @property
     def parameters(self) -> int:
         """Number of parameters of the fit."""
-        return 2 + self.continuum_terms + self.background_terms + 2 * len(self.lines)
+        return 2 + SMOOTH_TERMS + self.background_terms + 2 * len(self.lines)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -141,7 +148,7 @@ class EdgeFit:
 
 
 def continuum_rate(
-    readings: FloatArray, parameters: FloatArray, terms: int, given: Surroundings
+    readings: FloatArray, parameters: FloatArray, given: Surroundings
 ) -> tuple[FloatArray, FloatArray]:
     """Smeared continuum (1/s) and its derivatives by cutoff, amplitude and smooth terms.
 
@@ -149,21 +156,19 @@ def continuum_rate(
     ----------
     readings : ndarray, shape (n,)
         Goniometer readings, degrees.
-    parameters : ndarray, shape (2 + terms,)
-        Cutoff reading (degrees), log amplitude, smooth terms.
-    terms : int
-        Number of smooth terms.
+    parameters : ndarray, shape (4,) or longer
+        Cutoff reading (degrees), log amplitude, smooth terms; the rest is not used.
     given : Surroundings
         The rest.
 
     Returns
     -------
     rate : ndarray, shape (n,)
-    derivatives : ndarray, shape (n, 2 + terms)
+    derivatives : ndarray, shape (n, 4)
     """
     limit = float(parameters[0]) - given.zero_deg
     rate = np.zeros(readings.size)
-    derivatives = np.zeros((readings.size, 2 + terms))
+    derivatives = np.zeros((readings.size, 2 + SMOOTH_TERMS))
     angles = readings - given.zero_deg
     lit = angles + given.kernel.reach_deg > limit
     if limit <= 0.05 or limit >= 85.0 or not lit.any():
@@ -173,18 +178,17 @@ def continuum_rate(
     limit_sine = np.sin(np.radians(limit))
     x = np.maximum(np.sin(radians) / limit_sine - 1.0, 0.0)
     value, slope = rising_continuum(x, given.excess, given.energy_keV / given.excess_energy_keV)
-    smooth = parameters[1] + sum(parameters[2 + i] * x ** (i + 1) for i in range(terms))
+    stretch = np.log1p(x)
+    smooth = parameters[1] + parameters[2] * stretch + parameters[3] * stretch**2
     factor = weights * np.cos(radians) * np.exp(np.minimum(smooth, 60.0))
     value, slope = value * factor, slope * factor
-    slope = slope + value * sum(
-        (i + 1) * parameters[2 + i] * x**i for i in range(terms)
-    )
+    slope = slope + value * (parameters[2] + 2.0 * parameters[3] * stretch) / (1.0 + x)
     rate[lit] = value.sum(axis=1)
     x_by_limit = -(1.0 + x) / np.tan(np.radians(limit)) * (np.pi / 180.0)
     derivatives[lit, 0] = (slope * x_by_limit).sum(axis=1)
     derivatives[lit, 1] = rate[lit]
-    for i in range(terms):
-        derivatives[lit, 2 + i] = (value * x ** (i + 1)).sum(axis=1)
+    derivatives[lit, 2] = (value * stretch).sum(axis=1)
+    derivatives[lit, 3] = (value * stretch**2).sum(axis=1)
     return rate, derivatives
 
 
@@ -205,7 +209,7 @@ def background_rate(window: EdgeWindow, parameters: FloatArray) -> tuple[FloatAr
 
     The slope is in units of the half span of the window.
     """
-    start = 2 + window.continuum_terms
+    start = 2 + SMOOTH_TERMS
     readings = window.reading_deg
     half = max(0.5 * (readings[-1] - readings[0]), 1e-9)
     position = (readings - 0.5 * (readings[-1] + readings[0])) / half
@@ -219,12 +223,11 @@ def expected_counts(
     window: EdgeWindow, parameters: FloatArray, given: Surroundings
 ) -> tuple[FloatArray, FloatArray]:
     """Expected recorded counts, shape (n,), and their Jacobian, shape (n, p)."""
-    terms = window.continuum_terms
-    continuum, by_continuum = continuum_rate(window.reading_deg, parameters, terms, given)
+    continuum, by_continuum = continuum_rate(window.reading_deg, parameters, given)
     background, by_background = background_rate(window, parameters)
     columns = [by_continuum, by_background]
     rate = continuum + background
-    start = 2 + terms + window.background_terms
+    start = 2 + SMOOTH_TERMS + window.background_terms
     for i, template in enumerate(window.lines):
         amplitude = np.exp(min(float(parameters[start + 2 * i]), 60.0))
         shift = float(parameters[start + 2 * i + 1])
@@ -246,16 +249,18 @@ def expected_counts(
 def _prior(window: EdgeWindow, parameters: FloatArray) -> tuple[float, FloatArray, FloatArray]:
     """Penalty (as a deviance), its half gradient, and half its curvature (diagonal)."""
     precision = np.zeros(parameters.size)
-    for i in range(window.continuum_terms):
-        precision[2 + i] = _SMOOTH_U[i] ** -2
-    start = 2 + window.continuum_terms
+    centre = np.zeros(parameters.size)
+    precision[2:4] = np.array(window.smooth_u) ** -2.0
+    centre[2:4] = window.smooth_mean
+    start = 2 + SMOOTH_TERMS
     if window.background_terms > 1:
         precision[start + 1] = _BACKGROUND_SLOPE_U**-2
     for i in range(len(window.lines)):
         precision[start + window.background_terms + 2 * i + 1] = _LINE_SHIFT_U_DEG**-2
-    gradient = precision * parameters
+    gradient = precision * (parameters - centre)
+    penalty = float(gradient @ (parameters - centre))
+    penalty -= 2.0 * _BACKGROUND_POWER * float(parameters[start])
     gradient[start] -= _BACKGROUND_POWER
-    penalty = float(np.sum(precision * parameters**2) - 2.0 * _BACKGROUND_POWER * parameters[start])
     return penalty, gradient, precision
 
 
@@ -278,42 +283,19 @@ def fit_edge(
     """
     limits = np.full(start.size, 3.0)
     limits[0] = 0.1 * (window.reading_deg[-1] - window.reading_deg[0])
+    # A cutoff outside the window would be a guess; one at its end is refused by the caller.
+    low, high = np.full(start.size, -np.inf), np.full(start.size, np.inf)
+    low[0], high[0] = window.reading_deg[0], window.reading_deg[-1]
     maximum = maximise(
         window.counts,
         lambda parameters: expected_counts(window, parameters, given),
         lambda parameters: _prior(window, parameters),
         start,
         limits,
+        bounds=(low, high),
         hold=hold,
     )
     return EdgeFit(window, given, maximum)
-
-
-def response_deg(fit: EdgeFit, changed: Surroundings, change: float) -> float:
-    """Shift of the cutoff per unit of an input that the fit took as given.
-
-    By the implicit function theorem on the score: the fit answers to a change of the expected
-    counts as it would to the opposite change of the counts.
-
-    Parameters
-    ----------
-    fit : EdgeFit
-        A converged fit.
-    changed : Surroundings
-        The surroundings with one input moved by `change`.
-    change : float
-        By how much, in the input's unit.
-
-    Returns
-    -------
-    float
-        Degrees per unit of the input.
-    """
-    best = fit.maximum
-    moved, _ = expected_counts(fit.window, best.parameters, changed)
-    by_input = (moved - best.expected) / change
-    pull = best.jacobian.T @ (by_input / best.expected)
-    return float(-np.linalg.solve(best.information, pull)[0])
 
 
 def likelihood_sides(fit: EdgeFit) -> tuple[float, float]:

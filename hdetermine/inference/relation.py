@@ -17,6 +17,7 @@ from scipy.stats import chi2 as chi2_distribution
 
 from hdetermine.inference import measurement as names
 from hdetermine.inference.line import fit_straight_line
+from hdetermine.inference.shared import SharedTerms
 from hdetermine.inference.weights import (
     gls_weights,
     input_covariance,
@@ -43,7 +44,7 @@ VOLTAGE_INPUTS = (names.GAIN, names.OFFSET, names.RIPPLE, names.WORK_FUNCTION)
 
 
 def build_model(
-    apparatus: Apparatus, scale: AngleScale, cutoffs: tuple[Cutoff, ...]
+    apparatus: Apparatus, scale: AngleScale, shared: SharedTerms, cutoffs: tuple[Cutoff, ...]
 ) -> MeasurementModel:
     """Gather the used cutoffs and every input into the measurement model.
 
@@ -53,6 +54,8 @@ def build_model(
         For the inputs that neither lines nor edges changed.
     scale : AngleScale
         Zero, spacing and resolution as they stand after the lines.
+    shared : SharedTerms
+        What the edges share.
     cutoffs : tuple of Cutoff
         Refused ones are passed over.
 
@@ -70,7 +73,8 @@ def build_model(
         tube.cathode_work_function_eV,
         *scale.inputs,
         apparatus.crystal.refraction,
-        scale.resolution,
+        *(() if shared.width_free else (scale.resolution,)),
+        *shared.inputs,
         scale.kernel,
         apparatus.counter.dead_time_us,
         apparatus.continuum.near_limit_excess,
@@ -82,8 +86,12 @@ def build_model(
     inputs = tuple(common + own)
     index = {quantity.name: i for i, quantity in enumerate(inputs)}
     correlation = np.eye(len(inputs))
-    joint = [index[quantity.name] for quantity in scale.inputs]
-    correlation[np.ix_(joint, joint)] = scale.correlation
+    for joint, block in (
+        (scale.inputs, scale.correlation),
+        (shared.inputs, shared.correlation()),
+    ):
+        places = [index[quantity.name] for quantity in joint]
+        correlation[np.ix_(places, places)] = block
     responses = np.zeros((len(used), len(inputs)))
     for row, cutoff in enumerate(used):
         for name, response in cutoff.responses_deg.items():

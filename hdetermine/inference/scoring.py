@@ -55,6 +55,7 @@ def maximise(
     start: FloatArray,
     step_limits: FloatArray,
     *,
+    bounds: tuple[FloatArray | float, FloatArray | float] = (-np.inf, np.inf),
     hold: int | None = None,
     iterations: int = 60,
 ) -> Maximum:
@@ -72,6 +73,8 @@ def maximise(
         Where to start.
     step_limits : ndarray, shape (p,)
         No step is longer than this.
+    bounds : (low, high)
+        The parameters stay within; numbers or shape (p,).
     hold : int, optional
         Index of a parameter that stays where it starts (for profiles).
     iterations : int
@@ -98,7 +101,7 @@ def maximise(
         scale = np.diag(information).clip(min=1e-12)
         step = np.zeros(parameters.size)
         step[free] = np.linalg.solve((information + damping * np.diag(scale))[index], score[free])
-        trial = parameters + np.clip(step, -step_limits, step_limits)
+        trial = np.clip(parameters + np.clip(step, -step_limits, step_limits), *bounds)
         trial_expected, trial_jacobian = model(trial)
         trial_penalty, trial_gradient, trial_precision = prior(trial)
         trial_deviance = poisson_deviance(counts, trial_expected)

@@ -28,7 +28,6 @@ WORDS: dict[str, str] = {
     "continuum.smooth_*": "smooth factor of the continuum",
     "continuum.smooth_1": "smooth factor of the continuum, first term",
     "continuum.smooth_2": "smooth factor of the continuum, second term",
-    "continuum.smooth_3": "smooth factor of the continuum, third term",
 }
 SCAN_WORDS: dict[str, str] = {
     "counting_deg": "counting statistics",
