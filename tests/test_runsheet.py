@@ -361,6 +361,11 @@ def test_too_many_scans(tmp_path):
     assert "201 scans are more than the 200" in refusal(write_run(tmp_path / "run", sheet))
 
 
+def test_many_large_files(tmp_path, monkeypatch):
+    monkeypatch.setattr("hdetermine.files.runfolder.MAX_RUN_BYTES", len(SHEET) + len(TABLE) - 1)
+    assert "bytes in this and the files before it" in refusal(write_run(tmp_path / "run"))
+
+
 def test_links_out_of_the_folder_are_refused(tmp_path):
     (tmp_path / "secret.csv").write_text(TABLE)
     folder = write_run(tmp_path / "run")

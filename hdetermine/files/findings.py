@@ -23,7 +23,7 @@ from hdetermine.files.plaintext import plain_text, quoted
 from hdetermine.files.runfolder import RunFolder
 from hdetermine.files.scantable import read_points
 from hdetermine.files.sheetmodel import ScanPart, derived_name
-from hdetermine.files.tables import Column, Table, read_tables
+from hdetermine.files.tables import Column, Table, TableFile
 
 SUFFIXES = (".csv", ".tsv", ".txt", ".dat", ".asc", ".prn", ".xy", ".xlsx", ".ods")
 _NOT_SCANS = re.compile(r"readme|claims?\.|licen[cs]e", re.IGNORECASE)
@@ -111,7 +111,7 @@ def look_through(folder: Path) -> Findings:
                 raise InputError(f"{plain_text(name)}: its name has invisible characters.")
             path = run_folder.locate(name, "file", "run.toml")
             data = run_folder.read(path, name, MAX_TABLE_BYTES)
-            tables = read_tables(data, name)
+            tables = TableFile(data, name).tables()
         except InputError as error:
             left_out.append(str(error))
             continue
@@ -152,13 +152,15 @@ def _candidates(folder: Path) -> list[str]:
             "tables."
         ) from None
     check_limit(len(entries), MAX_FOLDER_ENTRIES, quoted(folder), "entries of a folder")
-    return [
+    tables = [
         name
         for name in entries
         if name.lower().endswith(SUFFIXES)
         and not name.startswith((".", "~"))
         and not _NOT_SCANS.search(name)
     ]
+    check_limit(len(tables), MAX_SCANS, quoted(folder), "tables in a folder")
+    return tables
 
 
 def _sort_key(voltage: Finding) -> float:

@@ -13,6 +13,9 @@ MAX_SHEET_BYTES = 262_144
 MAX_TABLE_BYTES = 16_000_000
 """Size of a scan table, bytes."""
 
+MAX_RUN_BYTES = 48_000_000
+"""Size of all files of a run together, bytes."""
+
 MAX_EXPANDED_BYTES = 64_000_000
 """Size of everything inside a spreadsheet, unpacked, bytes."""
 

@@ -10,6 +10,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 
 from hdetermine.errors import InputError
+from hdetermine.files.limits import MAX_RUN_BYTES, check_limit
 from hdetermine.files.plaintext import quoted
 from hdetermine.records.run import InputFile
 
@@ -76,10 +77,13 @@ class RunFolder:
         The folder.
     files : dict of str to InputFile
         Files read so far, by name.
+    size : int
+        Bytes read so far.
     """
 
     path: Path
     files: dict[str, InputFile] = field(default_factory=dict)
+    size: int = 0
 
     def locate(self, name: str, key: str, where: str) -> Path:
         """Find a file of the folder by its relative name.
@@ -118,5 +122,7 @@ class RunFolder:
     def read(self, path: Path, where: str, limit: int) -> bytes:
         """Read a file and note its checksum; arguments and errors as in `read_bytes`."""
         data = read_bytes(path, where, limit)
+        self.size += len(data)
+        check_limit(self.size, MAX_RUN_BYTES, where, "bytes in this and the files before it")
         self.files[where] = InputFile(where, hashlib.sha256(data).hexdigest())
         return data

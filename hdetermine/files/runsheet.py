@@ -26,7 +26,7 @@ from hdetermine.files.runfolder import RunFolder
 from hdetermine.files.scantable import read_points
 from hdetermine.files.sheetcheck import check_sheet
 from hdetermine.files.sheetmodel import RunSheet, ScanPart, TableReading, derived_name
-from hdetermine.files.tables import Table, read_table
+from hdetermine.files.tables import Table, TableFile
 from hdetermine.records.apparatus import Apparatus
 from hdetermine.records.run import Run, SheetEntry
 from hdetermine.records.scan import Scan
@@ -168,7 +168,7 @@ def _merged(entry: ScanPart, common: TableReading) -> ScanPart:
 def _read_scans(
     folder: RunFolder, sheet: RunSheet, apparatus: Apparatus, where: str
 ) -> tuple[Scan, ...]:
-    tables: dict[tuple[str, str | None], Table] = {}
+    tables: dict[str, TableFile] = {}
     scans: list[Scan] = []
     total = 0
     for number, raw in enumerate(sheet.scan, start=1):
@@ -180,12 +180,12 @@ def _read_scans(
                 f"{where}: key {key}: two scans are called {quoted(name)}; give one of them a "
                 "name of its own."
             )
-        source = (entry.file, entry.sheet)
-        if source not in tables:
+        if entry.file not in tables:
             path = folder.locate(entry.file, f"{key}.file", where)
-            data = folder.read(path, plain_text(entry.file), MAX_TABLE_BYTES)
-            tables[source] = read_table(data, plain_text(entry.file), entry.sheet)
-        scan = _scan(tables[source], entry, name, apparatus, f"{where}, {key}")
+            shown = plain_text(entry.file)
+            tables[entry.file] = TableFile(folder.read(path, shown, MAX_TABLE_BYTES), shown)
+        table = tables[entry.file].table(entry.sheet)
+        scan = _scan(table, entry, name, apparatus, f"{where}, {key}")
         total += scan.counts.size
         check_limit(total, MAX_RUN_POINTS, where, "points in all its scans")
         scans.append(scan)

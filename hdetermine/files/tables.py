@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import datetime
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 
 from hdetermine.errors import InputError
@@ -83,8 +83,8 @@ class Table:
         return ", ".join(shown) + (", …" if len(self.columns) > 12 else "")
 
 
-def read_table(data: bytes, where: str, sheet: str | None = None) -> Table:
-    """Read a scan table of any supported kind.
+class TableFile:
+    """A file with one scan table, or a spreadsheet with several; read once.
 
     Parameters
     ----------
@@ -92,55 +92,55 @@ def read_table(data: bytes, where: str, sheet: str | None = None) -> Table:
         Content of the file.
     where : str
         Its name, for messages.
-    sheet : str or None
-        Name of the sheet of a spreadsheet; None takes the only one that holds data.
-
-    Returns
-    -------
-    Table
 
     Raises
     ------
     InputError
-        In one sentence that names the file, the place and the remedy.
+        In one sentence that names the file, the place and the remedy; so do the methods.
     """
-    if _is_archive(data):
-        from hdetermine.files.spreadsheet import choose_sheet, read_sheets
 
-        sheets = read_sheets(data, where)
-        name = choose_sheet(sheets, _with_data(sheets), sheet, where)
-        return _from_grid(sheets[name], f"{where}, sheet {quoted(name)}")
-    if sheet is not None:
-        raise InputError(
-            f"{where}: sheet {quoted(sheet)} is asked for, but this is a text file; leave sheet "
-            "out of the run sheet."
-        )
-    return _from_text(split_lines(decode(data, where), where), where)
+    def __init__(self, data: bytes, where: str) -> None:
+        self.where = where
+        self._tables: dict[str, Table] = {}
+        self._sheets: dict[str, list[list[Cell]]] | None = None
+        if _is_archive(data):
+            from hdetermine.files.spreadsheet import read_sheets
 
+            self._sheets = read_sheets(data, where)
+        else:
+            self._tables[""] = _from_text(split_lines(decode(data, where), where), where)
 
-def read_tables(data: bytes, where: str) -> dict[str, Table]:
-    """Read every table of a file, by the name of its sheet (empty for a text file).
+    def table(self, sheet: str | None = None) -> Table:
+        """Return the table of a sheet; without a name, the only one that holds numbers."""
+        if self._sheets is None:
+            if sheet is not None:
+                raise InputError(
+                    f"{self.where}: sheet {quoted(sheet)} is asked for, but this is a text file; "
+                    "leave sheet out of the run sheet."
+                )
+            return self._tables[""]
+        from hdetermine.files.spreadsheet import choose_sheet
 
-    Arguments and errors as in `read_table`.
-    """
-    if not _is_archive(data):
-        return {"": read_table(data, where)}
-    from hdetermine.files.spreadsheet import read_sheets
+        name = choose_sheet(self._sheets, self._with_data(), sheet, self.where)
+        if name not in self._tables:
+            place = f"{self.where}, sheet {quoted(name)}"
+            self._tables[name] = _from_grid(self._sheets[name], place)
+        return self._tables[name]
 
-    sheets = read_sheets(data, where)
-    return {
-        name: _from_grid(sheets[name], f"{where}, sheet {quoted(name)}")
-        for name in _with_data(sheets)
-    }
+    def tables(self) -> dict[str, Table]:
+        """Every table by the name of its sheet (empty for a text file)."""
+        if self._sheets is None:
+            return self._tables
+        return {name: self.table(name) for name in self._with_data()}
+
+    def _with_data(self) -> list[str]:
+        """Names of the sheets that have rows of numbers."""
+        sheets = self._sheets or {}
+        return [name for name, rows in sheets.items() if _first_data_row(rows) is not None]
 
 
 def _is_archive(data: bytes) -> bool:
     return data.startswith(b"PK\x03\x04")
-
-
-def _with_data(sheets: Mapping[str, Sequence[Sequence[Cell]]]) -> list[str]:
-    """Names of the sheets that have rows of numbers."""
-    return [name for name, rows in sheets.items() if _first_data_row(rows) is not None]
 
 
 def _from_text(lines: TextLines, where: str) -> Table:
