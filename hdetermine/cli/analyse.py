@@ -51,24 +51,27 @@ def command(
     from hdetermine.files.atomic import write_outputs
     from hdetermine.files.resultfile import budget_csv, cutoffs_csv, result_json
     from hdetermine.files.runsheet import read_run
+    from hdetermine.report.document import report_document
     from hdetermine.report.html import render_html
     from hdetermine.report.pdf import render_pdf
     from hdetermine.report.summary import summary_lines
+    from hdetermine.report.templates import find_templates
 
+    find_templates(templates)  # a wrong folder is told before the work, not after it
     run = read_run(run_folder)
     with working("analysing") as progress:
         result = determine(
             run, seed, posterior=not linear_only, monte_carlo=not linear_only, progress=progress
         )
+        progress("figures", 0, 1)
+        document = report_document(result, brief=brief, laboratory=laboratory)
         makers: dict[str, Callable[[], bytes]] = {
             "result.json": lambda: result_json(result),
             "cutoffs.csv": lambda: cutoffs_csv(result),
             "budget.csv": lambda: budget_csv(result),
-            "report.html": lambda: render_html(
-                result, brief=brief, laboratory=laboratory, templates=templates
-            ),
+            "report.html": lambda: render_html(result, templates=templates, document=document),
             "report.pdf": lambda: render_pdf(
-                result, paper=paper, brief=brief, laboratory=laboratory, templates=templates
+                result, paper=paper, templates=templates, document=document
             ),
         }
         outputs = {}

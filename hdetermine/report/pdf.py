@@ -26,15 +26,14 @@ TEMPLATE = "report.typ"
 STANDARDS: list[Literal["ua-1", "a-2a"]] = ["ua-1", "a-2a"]
 """PDF/UA-1 (ISO 14289-1) and PDF/A-2a (ISO 19005-2); the compiler checks both."""
 
-Paper = Literal["a4", "us-letter"]
-PAPERS: tuple[Paper, ...] = ("a4", "us-letter")
+PAPERS = ("a4", "us-letter")
 UNKNOWN = "\N{WHITE SQUARE}"
 
 
 def render_pdf(
     d: Determination,
     *,
-    paper: Paper = "a4",
+    paper: str = "a4",
     brief: bool = False,
     laboratory: str = "",
     templates: str | Path | None = None,
