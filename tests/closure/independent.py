@@ -15,7 +15,6 @@ import math
 import os
 import tempfile
 from collections.abc import Iterable
-from concurrent.futures import ProcessPoolExecutor
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
@@ -30,6 +29,7 @@ from hdetermine.planning.spectrum import Absorber, HC_PER_E_pm_kV, SharpLine
 
 from .record import RunRecord, study_run
 from .settings import BASE, COPPER, Setting
+from .study import worker_pool
 
 GRID_keV = 0.1
 BIN_keV = {"casim": 0.02, "kqp": 0.05}
@@ -167,7 +167,7 @@ class Library:
             return
         task = bar.add_task(f"spekpy: {self.target}, {self.physics}", total=len(needed))
         empty = replace(self, loaded={})
-        with ProcessPoolExecutor(jobs) as pool:
+        with worker_pool(jobs) as pool:
             for _ in pool.map(empty._store, needed):
                 bar.advance(task)
 

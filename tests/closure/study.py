@@ -34,18 +34,23 @@ def run_study(
     told = report or (lambda _done, _of: None)
     if jobs <= 1:
         return list(_one_by_one(work, seeds, told))
-    # One thread a process; set before the processes start and import numpy.
-    for name in THREADS:
-        os.environ.setdefault(name, "1")
-    context = multiprocessing.get_context("spawn")
     records: dict[int, RunRecord] = {}
-    with ProcessPoolExecutor(jobs, context, initializer=_strict) as pool:
+    with worker_pool(jobs) as pool:
         futures = [pool.submit(work, seed) for seed in seeds]
         for future in as_completed(futures):
             record = future.result()
             records[record.seed] = record
             told(len(records), runs)
     return [records[seed] for seed in seeds]
+
+
+def worker_pool(jobs: int) -> ProcessPoolExecutor:
+    """Processes of one thread each, in which any warning is an error."""
+    # Set before the processes start and import numpy.
+    for name in THREADS:
+        os.environ.setdefault(name, "1")
+    context = multiprocessing.get_context("spawn")
+    return ProcessPoolExecutor(jobs, context, initializer=_strict)
 
 
 def _one_by_one(work: Worker, seeds: Sequence[int], told: Report) -> list[RunRecord]:
