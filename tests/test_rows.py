@@ -11,6 +11,7 @@ from report_fixture import example
 from hdetermine.inference import measurement as names
 from hdetermine.records.results import Budget, WindowFit
 from hdetermine.report import rows, rows_budget, rows_routes, rows_scale, rows_source
+from hdetermine.report.plaintext import sentence
 from hdetermine.report.spoken import input_words, scan_of, sources
 from hdetermine.report.table import Cell, decimals, digits, plus_minus, united, with_uncertainty
 
@@ -90,6 +91,14 @@ def test_cutoffs(d):
     assert column(table, "used")[0].text == "no: refused"
 
 
+def test_scans_that_were_never_meant_for_a_cutoff_are_not_called_refused(d):
+    for change, said in (({"edge": False}, "no: for the lines only"),
+                         ({"leave_out": "tube was warming up"}, "no: left out")):  # fmt: skip
+        scans = (replace(d.run.scans[0], **change), *d.run.scans[1:])
+        table = rows.cutoff_rows(replace(d, run=replace(d.run, scans=scans)))
+        assert column(table, "used")[0].text == said
+
+
 def test_value_from_one_scan_alone(d):
     """h_i = e U_i lambda_i / c, so that their weighted mean is h."""
     single = rows.single_values_J_s(d)
@@ -152,7 +161,12 @@ def test_improvements(d):
 def test_figures_behind_the_posterior(d):
     route = d.routes["posterior"]
     convergence = rows_routes.convergence_rows(route)
-    assert [cell.text for cell in convergence.rows[0]] == ["h", "3.02", "25\N{NARROW NO-BREAK SPACE}798", "1.005"]
+    assert [cell.text for cell in convergence.rows[0]] == [
+        "h",
+        "3.02",
+        "25\N{NARROW NO-BREAK SPACE}798",
+        "1.005",
+    ]
     assert "split R-hat of at most 1.05" in convergence.note
     priors = rows_routes.prior_rows(route)
     assert [row[0].text for row in priors.rows] == ["h", "gain of the voltage display"]
@@ -274,6 +288,17 @@ def test_names_in_words():
     assert input_words("something.new") == "something.new"
 
 
+@pytest.mark.parametrize(
+    ("text", "shown"),
+    [
+        ("it differs by -0.35 u (-3)", "it differs by −0.35 u (−3)"),
+        ("on 2026-03-12, K-L2,3, 1e-6, --2", "on 2026-03-12, K-L2,3, 1e-6, --2"),
+    ],
+)
+def test_true_minus_in_sentences(text, shown):
+    assert sentence(text) == shown
+
+
 @pytest.mark.parametrize("hostile", ["\x1b]0;x\x07", "a\u202eb", "line\nbreak", "x" * 9000])
 def test_text_from_the_run_is_tamed(hostile):
     table = rows.refused_rows(
@@ -281,4 +306,4 @@ def test_text_from_the_run_is_tamed(hostile):
     )
     shown = table.rows[0][2].text
     assert not any(ord(one) < 32 or one in "\u202e\u2066" for one in shown)
-    assert len(shown) <= 300
+    assert len(shown) <= 500

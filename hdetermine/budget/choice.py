@@ -101,9 +101,10 @@ def disagreements(routes: Mapping[str, Route], reported: str) -> Iterator[str]:
         ratio = route.standard_uncertainty_J_s / u
         if abs(shift) <= VALUE_TOLERANCE and abs(ratio - 1.0) <= UNCERTAINTY_TOLERANCE:
             continue
+        wider = f"{100.0 * (ratio - 1.0):+.0f}\N{NARROW NO-BREAK SPACE}%"
         yield (
             f"{_TITLES[name]} differs: its value by {shift:+.2f} u, its standard uncertainty by "
-            f"{ratio - 1.0:+.0%}; {_cause(name, reported, route)}."
+            f"{wider}; {_cause(name, reported, route)}."
         )
 
 

@@ -126,18 +126,24 @@ def common_share(budget: Budget) -> float:
     return sum(row.variance_share for row in budget.rows if row.common)
 
 
+def _percent(share: float) -> str:
+    """Whole per cent, with the space that the SI brochure asks for."""
+    return f"{100.0 * share:.0f}\N{NARROW NO-BREAK SPACE}%"
+
+
 def limiting_sentence(budget: Budget) -> str:
     """Say in one sentence what limits the result, and what more voltages could do."""
     shares = group_shares(budget)
     if not budget.combined_standard_uncertainty > 0.0:
         return "No input has an uncertainty, so nothing limits the result."
     leading = [
-        f"{group} ({share:.0%})" for group, share in list(shares.items())[:3] if share > 0.05
+        f"{group} ({_percent(share)})" for group, share in list(shares.items())[:3] if share > 0.05
     ]
     common = common_share(budget)
+    limits = ", ".join(leading) or "no single input by more than 5\N{NARROW NO-BREAK SPACE}%"
     return (
-        f"{budget.measurand} is limited by {', '.join(leading)}; {common:.0%} of the variance is "
-        "common to all voltages and does not shrink with more of them."
+        f"{budget.measurand} is limited by {limits}; {_percent(common)} of the variance is common "
+        "to all voltages and does not shrink with more of them."
     )
 
 

@@ -10,7 +10,7 @@ from hdetermine.records.scan import Scan
 from hdetermine.report import rows, rows_budget, rows_routes, rows_scale, rows_source
 from hdetermine.report.figure_svg import Picture
 from hdetermine.report.figures import Figures, draw_figures
-from hdetermine.report.plaintext import plain
+from hdetermine.report.plaintext import plain, sentence
 from hdetermine.report.rounding import typeset_plus_minus
 from hdetermine.report.table import Cell, Table, decimals, spelled, united
 
@@ -133,8 +133,8 @@ def report_document(
         tables=_tables(d),
         scans=() if brief else _panels(d, pictures),
         posterior_state="absent" if posterior is None else "" if posterior.usable else "unusable",
-        scale_remarks=tuple(plain(text) for text in d.angle_scale.remarks),
-        run_remarks=tuple(plain(text) for text in d.run.remarks),
+        scale_remarks=tuple(sentence(text) for text in d.angle_scale.remarks),
+        run_remarks=tuple(sentence(text) for text in d.run.remarks),
         program=f"hdetermine {d.provenance.package_version}",
     )
 
@@ -149,14 +149,14 @@ def lead(d: Determination) -> Lead:
         coverage=f"k = {decimals(h.coverage_factor, 2).text}, p = {probability}",
         deviation=decimals(100.0 * comparison.relative_deviation, 2, "%", signed=True).text,
         agreement=decimals(comparison.E_n, 2).text,
-        verdict=_sentence(plain(comparison.verdict, 500)),
+        verdict=_clause(sentence(comparison.verdict)),
         limits=limiting_sentence(d.budget),
-        route=plain(h.route_reason, 500),
+        route=sentence(h.route_reason),
         agrees=abs(comparison.E_n) <= 1.0,
     )
 
 
-def _sentence(verdict: str) -> str:
+def _clause(verdict: str) -> str:
     """Make a clause such as "agrees with the SI value" a sentence."""
     return f"The result {verdict}." if verdict[:1].islower() else verdict
 
@@ -222,6 +222,6 @@ def _panel(number: int, scan: Scan, cutoff: Cutoff, drawn: tuple[Picture, ...]) 
         heading=f"{plain(scan.name, 60)}, {voltage}",
         used=cutoff.used,
         facts=rows.scan_facts(cutoff),
-        remarks=tuple(plain(text, 500) for text in remarks),
+        remarks=tuple(sentence(text) for text in remarks),
         pictures=drawn,
     )

@@ -27,7 +27,9 @@ def lines_picture(scale: AngleScale) -> Picture | None:
     axes.axhline(0.0, color=BLUE, linewidth=1.2)
     places = _spread_out(scale.lines)
     for i, (label, order) in enumerate(labels):
-        name = plain(label, 30) if order == 1 else f"{plain(label, 30)}, order {order}"
+        name = plain(label, 30)
+        if order > 1 and "n =" not in name:
+            name += f", order {order}"
         for used in (True, False):
             drawn = [
                 (place, line)
@@ -43,6 +45,7 @@ def lines_picture(scale: AngleScale) -> Picture | None:
                 capsize=2.5, markersize=5.0, markerfacecolor=INK if used else "none",
                 label=name if used else f"{name} (not used)",
             )  # fmt: skip
+    axes.margins(0.08, 0.12)
     few_ticks(axes)
     axes.set_xlabel("glancing angle as read / °")
     axes.set_ylabel("reading − expectation / °")

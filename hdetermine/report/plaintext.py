@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import re
+
 from hdetermine.files.plaintext import plain_text
+from hdetermine.report.rounding import MINUS
 
 LONGEST = 300
 
@@ -25,3 +28,8 @@ def plain(text: str, longest: int = LONGEST) -> str:
     """
     shown = plain_text(text)
     return shown if len(shown) <= longest else shown[: longest - 1].rstrip() + "…"
+
+
+def sentence(text: str, longest: int = 500) -> str:
+    """Return a sentence of the program's own, its negative numbers with a true minus."""
+    return re.sub(r"(?<![\w.\-])-(?=\d)", MINUS, plain(text, longest))

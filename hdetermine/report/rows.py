@@ -8,6 +8,7 @@ import numpy as np
 
 from hdetermine.physics.constants import ELEMENTARY_CHARGE_C, PLANCK_PER_SLOPE
 from hdetermine.records.results import Cutoff, Determination
+from hdetermine.report.plaintext import sentence
 from hdetermine.report.spoken import ROUTE_WORDS, input_words, scan_of
 from hdetermine.report.table import (
     NONE,
@@ -85,11 +86,15 @@ def cutoff_rows(d: Determination) -> Table:
     """Cutoffs: one row a scan, refused ones included."""
     single = single_values_J_s(d)
     influence = {one.scan: one for one in d.relation.influence}
+    for_lines = {scan.name for scan in d.run.scans if not scan.edge}
+    left_out = {scan.name for scan in d.run.scans if scan.leave_out}
     rows = []
     for cutoff in d.cutoffs:
         name, voltage = words(cutoff.scan), digits(cutoff.tube_voltage_kV, 4)
         if not cutoff.used:
-            rows.append((name, voltage, *([Cell(NONE)] * 5), Cell(NONE), Cell("no: refused")))
+            why = "for the lines only" if cutoff.scan in for_lines else "refused"
+            why = "left out" if cutoff.scan in left_out else why
+            rows.append((name, voltage, *([Cell(NONE)] * 6), Cell(f"no: {why}")))
             continue
         own_u = own_u_deg(cutoff)
         value, value_u = single.get(cutoff.scan, (math.nan, math.nan))
@@ -133,7 +138,7 @@ def own_u_deg(cutoff: Cutoff) -> float:
 def scan_facts(cutoff: Cutoff) -> tuple[tuple[str, Cell], ...]:
     """What there is to say about one scan's fit: label and text."""
     if not cutoff.used:
-        return (("refused", words(cutoff.reason)),)
+        return (("no cutoff", Cell(sentence(cutoff.reason))),)
     own_u = own_u_deg(cutoff)
     facts = [
         ("cutoff, as read", with_uncertainty(cutoff.reading_deg, own_u, "deg")),
@@ -176,7 +181,7 @@ def refused_rows(d: Determination) -> Table | None:
     if not d.refused:
         return None
     rows = [
-        (words(cutoff.scan), digits(cutoff.tube_voltage_kV, 4), words(cutoff.reason))
+        (words(cutoff.scan), digits(cutoff.tube_voltage_kV, 4), Cell(sentence(cutoff.reason)))
         for cutoff in d.refused
     ]
     return table("refused", "Scans without a cutoff", ("scan", "U / kV", "reason"), rows,
@@ -205,7 +210,7 @@ def check_rows(d: Determination) -> Table:
     state = {True: "passed", False: "failed", None: "not possible"}
     rows = [
         (words(check.name), Cell(state[check.passed]), digits(check.figure, 3),
-         digits(check.limit, 3), words(check.meaning, longest=500))
+         digits(check.limit, 3), Cell(sentence(check.meaning)))
         for check in d.checks
     ]  # fmt: skip
     return table("checks", "Consistency checks", ("check", "outcome", "figure", "limit", "meaning"),

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 
 from hdetermine.records.results import Determination, Route
+from hdetermine.report.plaintext import sentence
 from hdetermine.report.rounding import grouped
 from hdetermine.report.rows_scale import diagnostic_rows
 from hdetermine.report.spoken import ROUTE_WORDS, input_words, scan_of
@@ -47,7 +48,7 @@ def route_rows(d: Determination) -> Table:
                 in_units(route.value_J_s, route.standard_uncertainty_J_s, -34),
                 interval(route.interval_95_J_s, route.standard_uncertainty_J_s, -34),
                 percent(route.value_J_s / d.comparison.reference_J_s - 1.0),
-                words(state if route.usable else f"not usable: {route.reason}"),
+                Cell(state if route.usable else sentence(f"not usable: {route.reason}")),
             )
         )
     return table(

@@ -110,7 +110,7 @@ def relation_rows(d: Determination) -> Table:
             (Cell("χ² of the line through the origin"), decimals(relation.chi2, 2),
              Cell(f"{relation.degrees_of_freedom} degrees of freedom")),
             (Cell("Birge ratio"), decimals(relation.birge_ratio, 2),
-             Cell("√(χ²/ν); near 1 where the stated uncertainties explain the scatter")),
+             Cell("√(χ²/ν), 1 expected")),
         ]  # fmt: skip
     if relation.scatter_deg > 0.0:
         rows.append((Cell("scatter between scans beyond all other inputs"),
