@@ -43,6 +43,8 @@ class Alignment:
         Relative standard uncertainties from rounding.
     own_u : float
         Relative standard uncertainty that the claim states for h, bounded; zero if none.
+    filled : ndarray of bool, shape (n,)
+        Rows that the re-analysis did not measure.
     """
 
     evidence: Evidence
@@ -50,6 +52,7 @@ class Alignment:
     log_values: FloatArray
     rounding_u: FloatArray
     own_u: float
+    filled: NDArray[np.bool_]
 
 
 def align(claim: Claim, evidence: Evidence) -> Alignment:
@@ -80,6 +83,7 @@ def align(claim: Claim, evidence: Evidence) -> Alignment:
         log_values=np.array([math.log(numeral.value) for numeral in numerals]),
         rounding_u=np.array([_relative_rounding(numeral) for numeral in numerals]),
         own_u=min(relative_u, LARGEST_CLAIMED_U) if math.isfinite(relative_u) else 0.0,
+        filled=~np.isin(full.displayed_kV, evidence.displayed_kV),
     )
 
 

@@ -85,6 +85,8 @@ class Variant:
         What is particular about the variant, for the reader; may be empty.
     angle_deg : ndarray, shape (n,), or None
         Cutoff angles read otherwise.
+    reading_u : float
+        Relative standard uncertainty with which `angle_deg` foretells what a person reads.
     shift_deg : ndarray, shape (n,), or None
         Added to the angles.
     order : ndarray of int, shape (n,), or None
@@ -97,18 +99,22 @@ class Variant:
         Voltages used in the relation; nan for a row that is left out.
     combine : callable or None
         How wavelengths and voltages become one slope.
+    invert : bool or None
+        True if the reciprocal of the slope is used, in 1/(pm kV).
     wavelength_factor, planck_factor : float
         Factors on every wavelength, and on h alone.
     """
 
     note: str = ""
     angle_deg: FloatArray | None = None
+    reading_u: float = 0.0
     shift_deg: FloatArray | None = None
     order: NDArray[np.int64] | None = None
     called: AngleStep | None = None
     sine_of: AngleStep | None = None
     voltage_kV: FloatArray | None = None
     combine: Combination | None = None
+    invert: bool | None = None
     wavelength_factor: float = 1.0
     planck_factor: float = 1.0
 
@@ -123,7 +129,9 @@ class Variant:
         return replace(self, note="", wavelength_factor=1.0, planck_factor=1.0)
 
 
-_STEPS = ("angle_deg", "shift_deg", "order", "called", "sine_of", "voltage_kV", "combine")
+_STEPS = (
+    "angle_deg", "shift_deg", "order", "called", "sine_of", "voltage_kV", "combine", "invert",
+)  # fmt: skip
 RIGHT = Variant()
 
 
@@ -141,6 +149,7 @@ def together(one: Variant, other: Variant) -> Variant | None:
         return None
     return Variant(
         note="; ".join(note for note in (one.note, other.note) if note),
+        reading_u=max(one.reading_u, other.reading_u),
         wavelength_factor=one.wavelength_factor * other.wavelength_factor,
         planck_factor=one.planck_factor * other.planck_factor,
         **taken,
@@ -186,9 +195,13 @@ class Prediction:
     response: FloatArray
 
 
-def predict(evidence: Evidence, variant: Variant, combine: Combination, rows: Rows) -> (
-    Prediction | None
-):  # fmt: skip
+def predict(
+    evidence: Evidence,
+    variant: Variant,
+    combine: Combination,
+    rows: Rows,
+    around: FloatArray | float = 0.0,
+) -> Prediction | None:
     """Say what a variant would have made of a group's data.
 
     Parameters
@@ -201,6 +214,9 @@ def predict(evidence: Evidence, variant: Variant, combine: Combination, rows: Ro
         How the voltages are combined, unless the variant says.
     rows : Rows
         Which numbers are claimed, m of them.
+    around : ndarray, shape (n,), or float
+        Logarithmic deviations of the readings about which the answer is linearised; the
+        prediction itself is for the evidence as it is.
 
     Returns
     -------
@@ -209,8 +225,9 @@ def predict(evidence: Evidence, variant: Variant, combine: Combination, rows: Ro
     """
     base = evidence.angle_deg if variant.angle_deg is None else variant.angle_deg
     n = base.size
+    deviation = np.broadcast_to(around, n)
     steps = np.vstack([np.zeros(n), _STEP * np.eye(n)])
-    angle = base * (1.0 + steps)
+    angle = base * np.exp(deviation + steps)
     if variant.shift_deg is not None:
         angle = angle + variant.shift_deg
     if variant.order is not None:
@@ -226,13 +243,16 @@ def predict(evidence: Evidence, variant: Variant, combine: Combination, rows: Ro
         method = combine if variant.combine is None else variant.combine
         if chosen.size < max(_fewest(variant, method), rows.used.size // 2):
             return None
-        slope = method(wavelength[:, chosen], voltage[chosen])
+        with np.errstate(divide="ignore", invalid="ignore"):  # wavelengths may all be the same
+            slope = method(wavelength[:, chosen], voltage[chosen])
+            slope = 1.0 / slope if variant.invert else slope
         parts.append(np.abs(slope[:, np.newaxis]) * PLANCK_PER_SLOPE * variant.planck_factor)
     values = np.hstack(parts)
     if not np.all(np.isfinite(values)) or np.any(values <= 0.0):
         return None
     logs = np.log(values)
-    return Prediction(logs[0], (logs[1:] - logs[0]).T / _STEP)
+    response = (logs[1:] - logs[0]).T / _STEP
+    return Prediction(logs[0] - response @ deviation, response)
 
 
 def _fewest(variant: Variant, method: Combination) -> int:

@@ -151,8 +151,9 @@ def _by_voltage(columns: Mapping[str, list[float]], determination: Determination
     repeats = np.array([np.count_nonzero(voltages == kV) for kV in distinct])
     shortcuts: dict[str, list[FloatArray]] = {}
     for name, column in mean.items():
-        if "/" in name and np.any(np.isfinite(column)):
-            shortcuts.setdefault(name.split("/")[0], []).append(column)
+        kind, found, _ = name.partition("/")
+        if found and np.any(np.isfinite(column)):
+            shortcuts.setdefault(kind, []).append(_completed(kind, column, mean["angle"]))
     return Evidence(
         displayed_kV=distinct,
         supplied_kV=apparatus.tube.gain.value * distinct + apparatus.tube.offset_kV.value,
@@ -169,6 +170,15 @@ def _by_voltage(columns: Mapping[str, list[float]], determination: Determination
         shortcuts_deg={name: tuple(variants) for name, variants in shortcuts.items()},
         last_deg=mean["last"],
     )
+
+
+def _completed(kind: str, column: FloatArray, angle_deg: FloatArray) -> FloatArray:
+    """Fill what a shortcut did not find from its usual ratio to the limit; a line has none."""
+    seen = np.isfinite(column)
+    if kind == "line" or 2 * np.count_nonzero(seen) < seen.size:
+        return column
+    ratio = float(np.median(column[seen] / angle_deg[seen]))
+    return np.where(seen, column, ratio * angle_deg)
 
 
 def effective_spacing_pm(crystal: Crystal) -> float:

@@ -51,7 +51,7 @@ def number_slips(unit: PlanckUnit) -> list[Slip]:
     plain = list(POWERS)
     rare = [4, 5, 7, 8, 11, 13, 14, 15]
     return [
-        Slip("power_of_ten", 2.5, _powers(plain)),
+        Slip("power_of_ten", 4.0, _powers(plain)),
         Slip("power_of_ten", 0.3, _powers(rare)),
         Slip("electronvolt_or_joule", 2.0, (Variant(planck_factor=mistaken),)),
         Slip("charge", 0.5, (Variant("one factor e too many", planck_factor=repeated),)),

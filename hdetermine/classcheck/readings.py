@@ -21,6 +21,8 @@ RISING_SIGMA = (2.5, 4.0)
 """How far above the level a point must lie to count as risen, in standard deviations."""
 LINE_POINTS = (4, 6, 8)
 """Rising points through which a straight line is laid."""
+SMOOTHING_POINTS = (1, 3, 5, 9)
+"""Points over which a curve is smoothed, by eye, before its maximum is read."""
 HUMP_REACH = 2.6
 """The maximum of the continuum is sought up to this multiple of the cutoff angle."""
 
@@ -121,18 +123,25 @@ def _maxima(
     edge_deg: float,
     fwhm_deg: float,
     lines_deg: Sequence[float],
-) -> tuple[float, float]:
-    """Reading of the continuum's maximum: highest point, and highest of a running mean."""
-    smooth = np.convolve(rate_per_s, np.full(5, 0.2), mode="same")
+) -> list[float]:
+    """Reading of the maximum: highest point of all, then of the continuum, more or less smooth."""
+    above = np.flatnonzero(reading_deg > edge_deg)
+    if above.size < 5:
+        return [math.nan] * (1 + len(SMOOTHING_POINTS))
+    found = [float(reading_deg[above[np.argmax(rate_per_s[above])]])]
     free = (reading_deg > edge_deg) & (reading_deg < HUMP_REACH * edge_deg)
-    free[:2] = free[-2:] = False
     for line in lines_deg:
         free &= np.abs(reading_deg - line) > 1.5 * fwhm_deg
-    places = np.flatnonzero(free)
-    if places.size < 5:
-        return math.nan, math.nan
-    highest = places[np.argmax(rate_per_s[places])]
-    smoothest = places[np.argmax(smooth[places])]
-    if smoothest in (places[0], places[-1]):
-        return math.nan, math.nan  # still rising at the end of the scan: no maximum to read
-    return float(reading_deg[highest]), float(reading_deg[smoothest])
+    for points in SMOOTHING_POINTS:
+        smooth = np.convolve(rate_per_s, np.full(points, 1.0 / points), mode="same")
+        places = free.copy()
+        places[: points // 2 + 1] = places[places.size - points // 2 - 1 :] = False
+        inside = np.flatnonzero(places)
+        if inside.size < 5:
+            found.append(math.nan)
+            continue
+        highest = inside[np.argmax(smooth[inside])]
+        # Still rising at the end of the scan: no maximum to read.
+        rising = highest in (inside[0], inside[-1])
+        found.append(math.nan if rising else float(reading_deg[highest]))
+    return found

@@ -59,14 +59,16 @@ WORDINGS: dict[str, Wording] = {
 def reading_slips(evidence: Evidence) -> list[Slip]:
     """Make the slips of reading for one group's data; those that change nothing are left out."""
     sources = {
-        "straight_line_crossing": ("crossing", 3.0),
-        "first_rising_point": ("first_rise", 2.0),
-        "maximum": ("maximum", 1.0),
-        "characteristic_line": ("line", 1.0),
+        # weight, and how well a person's reading is foretold (half a step, a flat maximum)
+        "straight_line_crossing": ("crossing", 5.0, 0.003),
+        "first_rising_point": ("first_rise", 3.0, 0.006),
+        "maximum": ("maximum", 1.0, 0.07),
+        "characteristic_line": ("line", 1.0, 0.003),
     }
     slips = []
-    for code, (source, weight) in sources.items():
-        variants = [Variant(angle_deg=angle) for angle in evidence.shortcuts_deg.get(source, ())]
+    for code, (source, weight, u) in sources.items():
+        columns = evidence.shortcuts_deg.get(source, ())
+        variants = [Variant(angle_deg=angle, reading_u=u) for angle in columns]
         if variants:
             slips.append(Slip(code, weight, tuple(variants)))
     second = _second_order(evidence)

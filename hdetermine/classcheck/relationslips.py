@@ -155,18 +155,10 @@ def _against_voltage() -> tuple[Variant, ...]:
 
 def _inverted() -> tuple[Variant, ...]:
     """Reciprocals of hc/e and of h/e, in SI units and in pm kV; h would be (e/c) times hc/e."""
-
-    def reciprocal(wavelength: FloatArray, voltage: FloatArray) -> FloatArray:
-        return np.asarray(1.0 / line_through_origin(wavelength, voltage))
-
     return (
         # 1/(1 pm kV) = 1e9 /(V m), which stands for 1e18 pm kV
-        Variant("e/(hc) put for hc/e", combine=reciprocal, planck_factor=1e18),
-        Variant("e/(hc) in 1/(pm kV) put for hc/e in pm kV", combine=reciprocal),
+        Variant("e/(hc) put for hc/e", invert=True, planck_factor=1e18),
+        Variant("e/(hc) in 1/(pm kV) put for hc/e in pm kV", invert=True),
         # e times (e/h) = e c/(hc/e): c squared more than e/c times the reciprocal
-        Variant(
-            "e/h put for h/e",
-            combine=reciprocal,
-            planck_factor=1e18 * SPEED_OF_LIGHT_M_PER_S**2,
-        ),
+        Variant("e/h put for h/e", invert=True, planck_factor=1e18 * SPEED_OF_LIGHT_M_PER_S**2),
     )

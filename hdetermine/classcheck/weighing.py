@@ -21,6 +21,8 @@ from hdetermine.classcheck.arithmetic import PROPER, Combination, Prediction, Va
 
 FloatArray = NDArray[np.float64]
 
+LARGEST_STEP = 0.3
+"""Logarithmic distance over which a linearisation is moved."""
 ZERO_READING_U_deg = 0.01
 """How well people take a zero over from the lines, besides what the re-analysis states."""
 
@@ -40,11 +42,11 @@ def _grid(
     return tuple(Scatter(*values) for values in itertools.product(single, common, arithmetic))
 
 
-ORDINARY = _grid((0.002, 0.006, 0.012, 0.02), (0.002, 0.007, 0.015), (0.002, 0.01))
-"""Scatter of honest readings: 1 to 2 % is common practice, no source."""
+ORDINARY = _grid((0.002, 0.006, 0.012, 0.02), (0.002, 0.005), (0.001, 0.005))
+"""Scatter of honest readings: 1 to 2 % of each cutoff is common practice, no source."""
 ORDINARY_WITHOUT_CUTOFFS = _grid((0.002, 0.007, 0.02), (0.002, 0.007, 0.015), (0.002, 0.01, 0.02))
 """For a claim of h alone, where the arithmetic cannot be followed."""
-COARSE = _grid((0.004, 0.015), (0.004, 0.015), (0.002, 0.01))
+COARSE = _grid((0.004, 0.015), (0.003, 0.01), (0.001, 0.005))
 """A thinner grid for combinations of two slips."""
 ANYTHING = _grid((0.01, 0.1), (0.05, 0.2, 1.0, 5.0), (0.01, 0.2, 5.0))
 """A mistake that no catalogue foresees."""
@@ -87,7 +89,11 @@ def factor_shifts(alignment: Alignment, factors: Sequence[Variant]) -> FloatArra
 
 
 def weigh(
-    alignment: Alignment, variant: Variant, shifts: FloatArray, grid: Sequence[Scatter]
+    alignment: Alignment,
+    variant: Variant,
+    shifts: FloatArray,
+    grid: Sequence[Scatter],
+    own: float = 1.0,
 ) -> Weights:
     """Weigh one variant, with each of several factors, against a claim.
 
@@ -101,6 +107,8 @@ def weigh(
         From `factor_shifts`.
     grid : sequence of Scatter
         Scatter that is tried.
+    own : float
+        Share of the re-analysis' own counting statistics that is counted.
 
     Returns
     -------
@@ -111,9 +119,9 @@ def weigh(
         combinations = PROPER[:1]
     pieces = []
     for combine in combinations:
-        prediction = predict(alignment.evidence, variant, combine, alignment.rows)
+        prediction = _predict(alignment, variant, combine)
         if prediction is not None:
-            pieces.append(_one(alignment, variant, prediction, shifts, grid))
+            pieces.append(_one(alignment, prediction, shifts, _own(alignment, variant, own), grid))
     if not pieces:
         nothing = np.full(len(shifts), -np.inf)
         return Weights(nothing, nothing, np.zeros(len(shifts)), np.full(len(shifts), np.nan))
@@ -130,15 +138,38 @@ def weigh(
     )  # fmt: skip
 
 
+def _predict(alignment: Alignment, variant: Variant, combine: Combination) -> Prediction | None:
+    """Predict; where the sine goes wild, linearise about the angles that are claimed."""
+    evidence, rows = alignment.evidence, alignment.rows
+    prediction = predict(evidence, variant, combine, rows)
+    claimed = rows.angles.size
+    if prediction is None or variant.sine_of is None or not claimed:
+        return prediction
+    missing = (alignment.log_values - prediction.log_values)[:claimed]
+    around = np.asarray(np.linalg.pinv(prediction.response[:claimed]) @ missing)
+    if np.max(np.abs(around)) > LARGEST_STEP:
+        return prediction
+    return predict(evidence, variant, combine, rows, around)
+
+
+def _own(alignment: Alignment, variant: Variant, share: float) -> FloatArray:
+    """Relative standard uncertainty of each reading, beside the scatter of reading."""
+    evidence = alignment.evidence
+    if variant.angle_deg is None:
+        return share * evidence.own_u
+    # Whoever reads off the same counts by a shortcut shares their counting statistics.
+    return np.where(alignment.filled, evidence.own_u, variant.reading_u)
+
+
 def _one(
     alignment: Alignment,
-    variant: Variant,
     prediction: Prediction,
     shifts: FloatArray,
+    own: FloatArray,
     grid: Sequence[Scatter],
 ) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Log likelihood, probability of chi squared and h, each of shape (grid, F)."""
-    covariance = _covariances(alignment, variant, prediction, grid)
+    covariance = _covariances(alignment, prediction, own, grid)
     lower = np.linalg.cholesky(covariance)
     residual = alignment.log_values - prediction.log_values - shifts
     white = np.linalg.solve(lower, np.broadcast_to(residual.T, (len(grid), *residual.T.shape)))
@@ -153,14 +184,12 @@ def _one(
 
 
 def _covariances(
-    alignment: Alignment, variant: Variant, prediction: Prediction, grid: Sequence[Scatter]
+    alignment: Alignment, prediction: Prediction, own: FloatArray, grid: Sequence[Scatter]
 ) -> FloatArray:
     """Covariance of the logarithms for each scatter of the grid, shape (grid, m, m)."""
     evidence, rows = alignment.evidence, alignment.rows
     response = prediction.response
     m = response.shape[0]
-    # Whoever reads off the same counts by a shortcut shares their counting statistics.
-    own = evidence.own_u if variant.angle_deg is None else np.zeros(evidence.size)
     per_zero = np.sum(response * np.radians(1.0) / np.tan(np.radians(evidence.angle_deg)), axis=1)
     zero_u = np.hypot(evidence.zero_u_deg, ZERO_READING_U_deg)
     fixed = (response * own**2) @ response.T + zero_u**2 * np.outer(per_zero, per_zero)
