@@ -63,8 +63,14 @@ def test_smeared_continuum_against_quadrature(triangular, box, step_deg, limit_s
             return lit * density(at - 0.13 - true_deg, 0.25, triangular, box)
 
         middle, reach = at - 0.13, 0.55
-        corners = {limit - 0.13, middle, middle - 0.25, middle + 0.25, middle - 0.125,
-                   middle + 0.125}
+        corners = {
+            limit - 0.13,
+            middle,
+            middle - 0.25,
+            middle + 0.25,
+            middle - 0.125,
+            middle + 0.125,
+        }
         low = max(middle - reach, limit - 0.13)
         if low >= middle + reach:
             return 0.0

@@ -34,7 +34,10 @@ DEFAULT_OTHER_STRENGTH_DEG = 0.1
 K-L2,3 peaks some times higher than the continuum at 35 kV; no source)."""
 
 SHEET_READING_KEYS = (
-    "abscissa_column", "abscissa_unit", "decimal", "sheet",
+    "abscissa_column",
+    "abscissa_unit",
+    "decimal",
+    "sheet",
 )
 """Keys that tell how a foreign table is read; a simulated table needs none of them."""
 
@@ -151,8 +154,9 @@ def check_specification(content: Mapping[str, Any], where: str = "spec") -> Spec
     run_sheet = {key: value for key, value in content.items() if key != "truth"}
     sheet = check_sheet(run_sheet, where)
     if not isinstance(content["truth"], Mapping):
-        raise InputError(f"{where}: key truth: found {quoted(content['truth'])}; allowed is a "
-                         "table of keys.")
+        raise InputError(
+            f"{where}: key truth: found {quoted(content['truth'])}; allowed is a table of keys."
+        )
     truth = check_truth(content["truth"], where)
     apparatus, _ = apparatus_of(sheet, where)
     if apparatus.tube.filter and apparatus.tube.filter not in K_EDGE_pm:
@@ -175,8 +179,7 @@ def _line_strengths(truth: TruthTable, anode: str, where: str) -> dict[str, floa
     known = [group.name for group in line_groups(anode)]
     if truth.line_strengths_deg is None:
         return {
-            name: DEFAULT_LINE_STRENGTHS_DEG.get(name, DEFAULT_OTHER_STRENGTH_DEG)
-            for name in known
+            name: DEFAULT_LINE_STRENGTHS_DEG.get(name, DEFAULT_OTHER_STRENGTH_DEG) for name in known
         }
     for name in truth.line_strengths_deg:
         if name not in known:
@@ -187,9 +190,7 @@ def _line_strengths(truth: TruthTable, anode: str, where: str) -> dict[str, floa
     return dict(truth.line_strengths_deg)
 
 
-def _planned_scans(
-    sheet: RunSheet, truth: TruthTable, where: str
-) -> tuple[PlannedScan, ...]:
+def _planned_scans(sheet: RunSheet, truth: TruthTable, where: str) -> tuple[PlannedScan, ...]:
     scans: list[PlannedScan] = []
     points = 0
     for number, part in enumerate(sheet.scan, start=1):
@@ -276,6 +277,4 @@ def _sweep_value(
             return float(value)
     if end == "step_deg" and nominal_step_deg is not None:
         return nominal_step_deg
-    raise InputError(
-        f"{key}: the sweep of {quoted(name)} has no {end}; state it under [truth]."
-    )
+    raise InputError(f"{key}: the sweep of {quoted(name)} has no {end}; state it under [truth].")

@@ -15,12 +15,12 @@ from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, T
 
 from hdetermine.planning.simulation import simulate_run
 
-from .bound import cutoff_bound_deg
+from .bound import NUISANCES, cutoff_bound_deg
 from .picture import picture
 from .record import RunRecord
 from .settings import OFF_THE_MODEL, PINNED, SETTINGS, SHIFTED, Setting
 from .study import Worker, run_study
-from .tables import document
+from .tables import document, table
 from .tally import StudyTally, tally
 
 Runner = Callable[[Setting, Worker | None], list[RunRecord]]
@@ -95,10 +95,10 @@ def _own(runner: Runner, only: str) -> tuple[list[str], list[StudyTally]]:
     return texts, tallies
 
 
-def over_the_bound(setting: Setting, records: Sequence[RunRecord]) -> dict[str, str]:
+def over_the_bound(setting: Setting, records: Sequence[RunRecord]) -> str:
     """Spread of each cutoff over its lower bound, in the windows that the fits chose."""
     _, simulated = simulate_run(setting.run_sheet(), setting.truth_table(1), 1)
-    ratios = {}
+    rows = []
     for scan, voltage in enumerate(setting.voltages_kV):
         mine = [
             record.cutoffs[scan] for record in records
@@ -110,15 +110,23 @@ def over_the_bound(setting: Setting, records: Sequence[RunRecord]) -> dict[str, 
         widest = max(cutoff.window_deg[1] for cutoff in mine)
         spread = float(np.std([cutoff.reading_error_deg for cutoff in mine], ddof=1))
         error = 1.0 / np.sqrt(2.0 * len(mine))
-        median = spread / cutoff_bound_deg(simulated, scan, (low, high))
-        wide = spread / cutoff_bound_deg(simulated, scan, (low, widest))
         counting = float(np.median([cutoff.counting_u_deg for cutoff in mine]))
-        ratios[f"{voltage:g}"] = (
-            f"{median:.2f}({median * error:.2f}) in the median window {low:.1f} to {high:.1f} deg; "
-            f"{wide:.2f} up to the widest, {widest:.1f} deg; spread {spread:.4f} deg, stated "
-            f"counting uncertainty {counting:.4f} deg"
-        )
-    return ratios
+        both = []
+        for to_deg in (high, widest):
+            for known in ((), ("tilt",)):
+                free = [name for name in NUISANCES if name not in known]
+                ratio = spread / cutoff_bound_deg(simulated, scan, (low, to_deg), free)
+                both.append(f"{ratio:.2f}({ratio * error:.2f})")
+        rows.append((
+            f"{voltage:g}", f"{low:.1f} to {high:.1f}", both[0], both[1], f"{widest:.1f}",
+            both[2], both[3], f"{spread:.4f}", f"{counting:.4f}",
+        ))  # fmt: skip
+    return table(
+        ("kV", "median window/deg", "spread over the bound", "local slope known",
+         "widest window to/deg", "spread over the bound", "local slope known", "spread/deg",
+         "stated counting u/deg"),
+        rows,
+    )  # fmt: skip
 
 
 def _independent(

@@ -2,14 +2,15 @@
 
 Cramer and Rao: no unbiased estimate spreads less than the inverse of the Fisher information
 (H. Cramer, Mathematical Methods of Statistics (1946), ch. 32). For Poisson counts with means m
-that is sum(dm/da dm/db / m) over the points. The nuisances are what an edge fit cannot know:
-amplitude, local slope of the continuum, level and slope of the background. Resolution, shape
-and dead time are known, in the bound as in the run sheet that the study uses.
+that is sum(dm/da dm/db / m) over the points. The nuisances are what the fit of one edge cannot
+know: amplitude, local slope of the continuum, level and slope of the background. Resolution,
+shape and dead time are known, in the bound as in the run sheet that the study uses. A method
+that learns the local slope from all edges together may come closer to the bound without it.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -38,8 +39,14 @@ class Bent:
         return self.inner.lines()
 
 
+NUISANCES = ("amplitude", "tilt", "level", "slope")
+
+
 def cutoff_bound_deg(
-    simulated: SimulatedRun, scan: int, window_deg: tuple[float, float]
+    simulated: SimulatedRun,
+    scan: int,
+    window_deg: tuple[float, float],
+    nuisances: Sequence[str] = NUISANCES,
 ) -> float:
     """Smallest standard deviation of the cutoff's reading, degrees.
 
@@ -51,6 +58,8 @@ def cutoff_bound_deg(
         Which scan.
     window_deg : (float, float)
         Readings that take part.
+    nuisances : sequence of str
+        What is unknown beside the cutoff.
     """
     plan = simulated.specification.scans[scan]
     truth = simulated.truth
@@ -81,7 +90,10 @@ def cutoff_bound_deg(
     }  # fmt: skip
     centre = mean()
     derivative = np.array(
-        [_derivative(lambda x, name=name: mean(**{name: x}), step) for name, step in steps.items()]
+        [
+            _derivative(lambda x, name=name: mean(**{name: x}), steps[name])
+            for name in ("shift", *nuisances)
+        ]
     )
     information = (derivative / centre) @ derivative.T
     variance = np.linalg.inv(information)[0, 0]

@@ -76,9 +76,7 @@ def study_run(
     setting: Setting, seed: int, spectra: SpectrumMaker | None = None, **options: bool
 ) -> RunRecord:
     """Simulate and analyse one run."""
-    run, simulated = simulate_run(
-        setting.run_sheet(), setting.truth_table(seed), seed, spectra
-    )
+    run, simulated = simulate_run(setting.run_sheet(), setting.truth_table(seed), seed, spectra)
     record = RunRecord(seed)
     began = time.perf_counter()
     try:

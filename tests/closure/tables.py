@@ -84,13 +84,11 @@ def remarks(study: StudyTally) -> str:
     return "\n".join(lines) + "\n"
 
 
-def document(
-    title: str, studies: Sequence[StudyTally], bounds: dict[str, str] | None = None
-) -> str:
+def document(title: str, studies: Sequence[StudyTally], bounds: str = "") -> str:
     """Everything about a group of studies."""
     parts = [f"## {title}\n", route_table(studies), analysis_table(studies)]
     if bounds:
-        parts.append(table(("kV", "spread over the lower bound"), list(bounds.items())))
+        parts.append(bounds)
     for study in studies:
         parts += [f"### {study.name}\n", voltage_table(study), remarks(study)]
     return "\n".join(parts)
