@@ -27,6 +27,7 @@ FloatArray = NDArray[np.float64]
 _SPANS = (0.12, 0.2, 0.3, 0.45)  # upper end: wavelength beyond the cutoff, relative
 _DEPTHS_WIDTHS = (4.0, 9.0)  # lower end, in resolution widths below the cutoff
 _DEPTHS_STEPS = (8.0, 18.0)  # ... but at least so many steps
+BACKGROUNDS = (2, 3)  # a level alone would bias the cutoff wherever the background slopes
 LEAST_BELOW = 3
 LEAST_ABOVE = 4
 _LEAST_FREEDOM = 2
@@ -123,7 +124,7 @@ def windows(
             readings = scan.reading_deg[take]
             if not _enough(readings, edge_deg, width):
                 continue
-            for background in (1, 2):
+            for background in BACKGROUNDS:
                 window = EdgeWindow(
                     readings,
                     scan.counts[take].astype(float),
@@ -211,7 +212,7 @@ def average(fits: tuple[EdgeFit, ...]) -> Family:
     variances = np.array([fit.reading_u_deg**2 for fit in kept])
     mean = float(weights @ readings)
     between = 0.0
-    for terms in (1, 2):
+    for terms in BACKGROUNDS:
         group = np.array([fit.window.background_terms == terms for fit in kept])
         share = float(weights[group].sum())
         if share > 0.0:

@@ -4,10 +4,10 @@ The expected count of a point is
 
     t rec( B(theta) + int K(theta - theta') C(theta') dtheta' + lines ),
 
-with rec the dead time, B = exp(b0 + b1 s) a sloping background, K the smearing kernel and
+with rec the dead time, B = exp(b0 + b1 s + b2 s^2) the background, K the smearing kernel and
 C = exp(a0 + a1 L + a2 L^2) cos(theta') f(x) the continuum above its limit, x = lambda/lambda_min
-- 1, L = ln(1 + x), and f the shape of `physics.continuum`. The fit maximises the likelihood by Fisher
-scoring (`scoring`). Weak priors keep what the data do not see within reason; they are stated
+- 1, L = ln(1 + x), and f the shape of `physics.continuum`. The fit maximises the likelihood by
+Fisher scoring (`scoring`). Weak priors keep what the data do not see within reason; they are stated
 beside the numbers below.
 """
 
@@ -27,10 +27,10 @@ from hdetermine.records.apparatus import DeadTimeModel
 FloatArray = NDArray[np.float64]
 
 # Weak priors (standard deviations): the background changes by less than exp(3) from end to end
-# of the window; a line stands within 0.02 degrees of where the angle scale puts it. The amplitude
-# b of the background has the prior b^(0.1 - 1): as good as flat in its logarithm, but a background
-# without counts stays defined.
-_BACKGROUND_SLOPE_U = 1.5
+# of the window, and bends by less than exp(1); a line stands within 0.02 degrees of where the
+# angle scale puts it. The amplitude b of the background has the prior b^(0.1 - 1): as good as flat
+# in its logarithm, but a background without counts stays defined.
+_BACKGROUND_U = (1.5, 1.0)
 SMOOTH_TERMS = 2
 # What transmission, crystal and counter do together is close to a power of the wavelength: the
 # crystal reflects as its square, thin counters absorb as its cube, windows and air the other way.
@@ -102,7 +102,7 @@ class EdgeWindow:
     reading_deg, counts, dwell_s : ndarray, shape (n,)
         The points.
     background_terms : int
-        1 or 2 terms of the background.
+        2 or 3 terms of the logarithm of the background: level, slope, bend.
     lines : tuple of LineTemplate
         Lines modelled inside the window.
     smooth_mean, smooth_u : (float, float)
@@ -253,8 +253,8 @@ def _prior(window: EdgeWindow, parameters: FloatArray) -> tuple[float, FloatArra
     precision[2:4] = np.array(window.smooth_u) ** -2.0
     centre[2:4] = window.smooth_mean
     start = 2 + SMOOTH_TERMS
-    if window.background_terms > 1:
-        precision[start + 1] = _BACKGROUND_SLOPE_U**-2
+    bends = window.background_terms - 1
+    precision[start + 1 : start + 1 + bends] = np.array(_BACKGROUND_U[:bends]) ** -2.0
     for i in range(len(window.lines)):
         precision[start + window.background_terms + 2 * i + 1] = _LINE_SHIFT_U_DEG**-2
     gradient = precision * (parameters - centre)

@@ -70,20 +70,27 @@ def find_lines(run: Run) -> tuple[FittedLine, ...]:
         if scan.name not in matches:
             continue
         zero, _ = matches[scan.name]
-        found.extend(
-            line
-            for line in fit_lines(
-                scan,
-                scan_features(run, scan),
-                zero,
-                counter.dead_time_us.value,
-                counter.dead_time_model,
-            )
-            if line.significance > SIGNIFICANT
-            and abs(line.shift_deg - zero) < min(line.fwhm_deg, FARTHEST_DEG)
-            and scan.step_deg < 1.5 * line.fwhm_deg < 1.5 * WIDEST_DEG
+        fitted = fit_lines(
+            scan,
+            scan_features(run, scan),
+            zero,
+            counter.dead_time_us.value,
+            counter.dead_time_model,
         )
+        found.extend(line for line in fitted if _sound(line, scan, zero))
     return tuple(found)
+
+
+def _sound(line: FittedLine, scan: Scan, zero_deg: float) -> bool:
+    """Whether a fitted line is one: significant, where it was seen, and whole inside the scan."""
+    centre = line.feature.angle_deg + line.shift_deg
+    inside = min(centre - scan.reading_deg[0], scan.reading_deg[-1] - centre)
+    return (
+        line.significance > SIGNIFICANT
+        and abs(line.shift_deg - zero_deg) < min(line.fwhm_deg, FARTHEST_DEG)
+        and scan.step_deg < 1.5 * line.fwhm_deg < 1.5 * WIDEST_DEG
+        and inside > line.fwhm_deg
+    )
 
 
 def _refuse_doubled_angle(
