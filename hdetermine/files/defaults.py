@@ -93,8 +93,8 @@ RIPPLE = InputRule(
     (-0.5, 1.0),
     "(peak - displayed)/displayed, a ratio and not percent",
     0.0,
-    half_width=0.01,
-    reason=f"a supply that does not state it may peak a percent off its display ({_PRACTICE})",
+    half_width=0.015,
+    reason=f"a supply that does not state it may peak a percent or two off its display ({_PRACTICE})",
 )
 WORK_FUNCTION = InputRule(
     "tube.cathode_work_function_eV",
