@@ -74,4 +74,4 @@ def garwood_interval(
     tail = 0.5 * (1.0 - probability)
     lower = np.where(n > 0, gammaincinv(np.maximum(n, 1.0), tail), 0.0)
     upper = gammaincinv(n + 1.0, 1.0 - tail)
-    return lower, upper
+    return np.asarray(lower, dtype=float), np.asarray(upper, dtype=float)

@@ -5,7 +5,6 @@ from __future__ import annotations
 import datetime
 import json
 import os
-import tempfile
 from collections.abc import Iterator
 from functools import lru_cache
 from pathlib import Path
@@ -81,29 +80,29 @@ def render_pdf(
         "document": document_data(document),
         "wording": wording,
     }
-    with tempfile.TemporaryDirectory(prefix="hdetermine-") as name:
-        root = Path(name)
-        found.copy_to(root)
-        return _compiled(root, content)
+    return _compiled(found.sources(), content)
 
 
-def _compiled(root: Path, content: dict[str, Any]) -> bytes:
+def _compiled(sources: dict[str, bytes], content: dict[str, Any]) -> bytes:
     """Compile with our own fonts; ask for the machine's only where ours lack a character."""
     strange = not _covers(_texts(content))
     attempts = ((content, False),) if not strange else (
         (content, True), (replaced(content), False))  # fmt: skip
     for number, (data, machine_fonts) in enumerate(attempts, start=1):
-        (root / "data.json").write_text(json.dumps(data, ensure_ascii=True), encoding="utf-8")
+        # From memory: no folder for a killed process to leave behind.
+        # (Any: the stub of typst does not list the mapping that its documentation describes.)
+        files: Any = {**sources, "data.json": json.dumps(data, ensure_ascii=True).encode("ascii")}
+        files["main.typ"] = files[TEMPLATE]
         try:
-            return typst.compile(
-                str(root / TEMPLATE),
-                root=str(root),
+            pdf: bytes = typst.compile(
+                files,
                 format="pdf",
                 pdf_standards=[*STANDARDS],
                 timestamp=_timestamp(),
                 font_paths=[_font_folder()],
                 ignore_system_fonts=not machine_fonts,
             )
+            return pdf
         except typst.TypstError as error:
             if number < len(attempts):
                 continue

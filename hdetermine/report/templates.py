@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import shutil
 import tomllib
 from dataclasses import dataclass
 from functools import lru_cache
@@ -52,12 +51,14 @@ class Templates:
         """Jinja2 environment for pages: everything escaped, nothing undefined let through."""
         return _environment(self.folders)
 
-    def copy_to(self, folder: Path) -> None:
-        """Lay all files of both places into one folder, the laboratory's on top."""
-        for source in reversed(self.folders):
-            for path in sorted(source.iterdir()):
-                if path.is_file() and path.suffix in (".typ", ".toml"):
-                    shutil.copyfile(path, folder / path.name)
+    def sources(self) -> dict[str, bytes]:
+        """All files for the document by name, the laboratory's in place of ours."""
+        return {
+            path.name: path.read_bytes()
+            for folder in reversed(self.folders)
+            for path in sorted(folder.iterdir())
+            if path.is_file() and path.suffix in (".typ", ".toml")
+        }
 
 
 @lru_cache(maxsize=8)
