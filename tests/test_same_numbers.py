@@ -48,6 +48,11 @@ def numbers(text: str) -> tuple[str, Decimal, Decimal | None]:
     return digits, value, uncertainty
 
 
+def two_digits(uncertainty: Decimal | None) -> bool:
+    """Whether an uncertainty is given to two significant digits (JCGM 100:2008, 7.2.6)."""
+    return uncertainty is not None and len(uncertainty.as_tuple().digits) == 2
+
+
 def agrees(shown: Decimal, exact: float) -> bool:
     """Whether a printed number is the exact one, rounded to the printed place."""
     place = Decimal(1).scaleb(shown.as_tuple().exponent)
@@ -115,6 +120,7 @@ def test_result_table_of_the_page(page, document):
         assert (printed_u is None) == (uncertainty is None)
         if uncertainty is not None:
             assert agrees(printed_u, uncertainty), name
+            assert two_digits(printed_u), name
 
 
 def test_result_table_of_the_document_is_that_of_the_page(page, pdf_text):
@@ -148,6 +154,7 @@ def test_cutoffs_in_page_document_table_and_result_file(d, page, pdf_text, docum
         _, wavelength, u = numbers(row[4])
         assert agrees(wavelength, entry["wavelength_pm"])
         assert agrees(u, entry["standard_uncertainty_pm"])
+        assert two_digits(u)
         assert "".join(row[:5]).replace(" ", "") in pdf_text.replace(" ", "")
     assert used == len(d.used)
 
@@ -176,9 +183,12 @@ def test_routes_in_page_and_result_file(page, document):
         _, value, u = numbers(row[1])
         assert agrees(value.scaleb(-34), entry["value_J_s"])
         assert agrees(u.scaleb(-34), entry["standard_uncertainty_J_s"])
+        assert two_digits(u)
         low, high = row[2].split(" to ")
         for text, end in zip((low, high), entry["interval_95_J_s"], strict=True):
-            assert agrees(numbers(text)[1].scaleb(-34), end)
+            printed = numbers(text)[1]
+            assert agrees(printed.scaleb(-34), end)
+            assert printed.as_tuple().exponent == value.as_tuple().exponent
 
 
 @pytest.mark.parametrize(
