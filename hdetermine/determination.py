@@ -17,7 +17,13 @@ from hdetermine.inference.anglescale import angle_scale
 from hdetermine.inference.cutoffs import find_cutoffs
 from hdetermine.inference.montecarlo import monte_carlo_route
 from hdetermine.inference.posterior import posterior_route
-from hdetermine.inference.relation import add_scatter, build_model, learn_repeatability, relate
+from hdetermine.inference.relation import (
+    add_scatter,
+    birge_ratio_of,
+    build_model,
+    learn_repeatability,
+    relate,
+)
 from hdetermine.judgement import compare, consistency, read_backwards
 from hdetermine.records.results import (
     Budget,
@@ -75,9 +81,9 @@ def determine(
         raise InputError(_nothing_usable(cutoffs))
     model = build_model(run.apparatus, scale, shared, cutoffs)
     model, repeat = learn_repeatability(model)
-    before = relate(model, 0.0, repeat)
+    stated_birge_ratio = birge_ratio_of(model)
     model, scatter = add_scatter(model)
-    relation = replace(relate(model, scatter, repeat), stated_birge_ratio=before.birge_ratio)
+    relation = replace(relate(model, scatter, repeat), stated_birge_ratio=stated_birge_ratio)
     cutoffs = _with_uncertainties(cutoffs, relation)
 
     budget = planck_budget(model)

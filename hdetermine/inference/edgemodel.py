@@ -195,13 +195,9 @@ def continuum_rate(
 def _line_rate(
     readings: FloatArray, template: LineTemplate, shift: float, given: Surroundings
 ) -> FloatArray:
-    angles = readings - given.zero_deg - shift
-    return np.asarray(
-        sum(
-            strength * given.kernel.profile(angles - angle, natural)
-            for angle, natural, strength in template.components
-        )
-    )
+    centre, natural, strength = np.array(template.components).T
+    distance = (readings - given.zero_deg - shift)[:, np.newaxis] - centre
+    return np.asarray(given.kernel.profile(distance, natural) @ strength)
 
 
 def background_rate(window: EdgeWindow, parameters: FloatArray) -> tuple[FloatArray, FloatArray]:

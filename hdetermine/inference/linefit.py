@@ -158,12 +158,8 @@ def _running_background(readings: FloatArray, rate: FloatArray) -> FloatArray:
 
 
 def _feature_profile(angles: FloatArray, feature: Feature, kernel: Kernel) -> FloatArray:
-    return np.asarray(
-        sum(
-            strength * kernel.profile(angles - angle, natural)
-            for angle, natural, strength in feature.components
-        )
-    )
+    centre, natural, strength = np.array(feature.components).T
+    return np.asarray(kernel.profile(angles[:, np.newaxis] - centre, natural) @ strength)
 
 
 def _clusters(inside: tuple[Feature, ...], reach_deg: float) -> Iterator[tuple[Feature, ...]]:

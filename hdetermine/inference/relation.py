@@ -236,6 +236,14 @@ def add_scatter(model: MeasurementModel) -> tuple[MeasurementModel, float]:
     return with_gls_weights(widened), scatter_deg
 
 
+def birge_ratio_of(model: MeasurementModel) -> float:
+    """Root of chi-square per degree of freedom of the single values of h; nan for one scan."""
+    n = len(model.scans)
+    if n < 2:
+        return math.nan
+    return math.sqrt(_chi2(np.log(single_planck_J_s(model)), _log_covariance(model)) / (n - 1))
+
+
 def _log_covariance(model: MeasurementModel) -> FloatArray:
     """Covariance of ln h_i at the fitted relation."""
     planck = np.array([model.weights @ single_planck_J_s(model)])

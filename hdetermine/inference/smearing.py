@@ -50,7 +50,9 @@ class Kernel:
         """Distance beyond which the kernel is zero, degrees."""
         return _GAUSS_REACH * self.sigma_deg
 
-    def profile(self, distance_deg: FloatArray, natural_fwhm_deg: float = 0.0) -> FloatArray:
+    def profile(
+        self, distance_deg: FloatArray, natural_fwhm_deg: FloatArray | float = 0.0
+    ) -> FloatArray:
         """Kernel with unit area at a distance from its centre, 1/degree.
 
         A natural line width enters the Gaussian part as a Voigt profile; in the triangular
