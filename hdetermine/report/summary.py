@@ -61,7 +61,7 @@ def summary_lines(d: Determination) -> list[str]:
     if remarks:
         lines += ["", "  Remarks:"]
         lines += [f"    {remark}" for remark in remarks]
-    return [plain(line, 500) if line.strip() else "" for line in _keep_indent(lines)]
+    return [_plain_line(line) for line in lines]
 
 
 def _fitting(name: str) -> str:
@@ -69,10 +69,8 @@ def _fitting(name: str) -> str:
     return f"{text[:15]}…" if len(text) > 16 else f"{text:16s}"
 
 
-def _keep_indent(lines: list[str]) -> list[str]:
-    """No-break spaces in front, so that cleaning does not take the indentation away."""
-    kept = []
-    for line in lines:
-        body = line.lstrip(" ")
-        kept.append("\N{NO-BREAK SPACE}" * (len(line) - len(body)) + body)
-    return kept
+def _plain_line(line: str) -> str:
+    """Clean a line and leave its indentation and columns alone."""
+    body = line.lstrip(" ")
+    indent = " " * (len(line) - len(body))
+    return indent + "  ".join(plain(part, 500) for part in body.split("  "))
