@@ -31,6 +31,9 @@ SETTLED = 1e-13
 """The iteration ends when a step moves the weighted points by no more than this (times the root
 of chi2, where that is above one)."""
 
+ROUNDING = 1e-7
+"""It also ends when steps no longer than this stop shrinking."""
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class StraightLine:
@@ -135,12 +138,17 @@ def fit_straight_line(
 
     start, _ = _solve(_design(points.x, intercept), points.y)
     best = points.adjusted(start)
+    earlier = math.inf
     for _ in range(MOST_STEPS):
         design = best.whitened(_design(best.fitted_x, intercept))
         step, covariance = _solve(design, best.white)
         following = _descend(points, best, step)
         moved = float(np.linalg.norm(design @ (following.line - best.line)[:least]))
-        settled = moved <= SETTLED * max(1.0, math.sqrt(best.chi2))
+        scale = max(1.0, math.sqrt(best.chi2))
+        # Strongly correlated points leave the last steps to rounding: they stop shrinking.
+        rounding = moved <= ROUNDING * scale and moved > 0.5 * earlier
+        settled = moved <= SETTLED * scale or rounding
+        earlier = moved
         best = following
         if settled:
             break

@@ -15,8 +15,9 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.stats import chi2 as chi2_distribution
 
+from hdetermine.errors import InputError
 from hdetermine.inference import measurement as names
-from hdetermine.inference.line import fit_straight_line
+from hdetermine.inference.line import StraightLine, fit_straight_line
 from hdetermine.inference.shared import SharedTerms
 from hdetermine.inference.weights import (
     gls_weights,
@@ -297,21 +298,7 @@ def relate(model: MeasurementModel, scatter: float, repeat: float | None) -> Rel
     n = len(model.scans)
     chi2 = _chi2(np.log(single), log_covariance)
     slope_u = slope * math.sqrt(float(model.weights @ log_covariance @ model.weights))
-    free_slope, intercept, exponent, exponent_u = math.nan, math.nan, math.nan, math.nan
-    free_covariance = np.full((2, 2), math.nan)
-    if len(set(model.displayed_kV.tolist())) >= 3:
-        inverse = 1.0 / voltages
-        line = fit_straight_line(
-            inverse,
-            wavelengths,
-            np.outer(inverse, inverse) * log_voltage,
-            np.outer(fitted, fitted) * log_wavelength,
-        )
-        free_slope, intercept, free_covariance = line.slope, line.intercept, line.covariance
-        power = fit_straight_line(
-            np.log(voltages), np.log(wavelengths), log_voltage, log_wavelength
-        )
-        exponent, exponent_u = -power.slope, power.slope_u
+    free, power = _free_lines(model, wavelengths, voltages, fitted, log_wavelength, log_voltage)
     return Relation(
         scans=model.scans,
         voltages_kV=voltages,
@@ -321,11 +308,11 @@ def relate(model: MeasurementModel, scatter: float, repeat: float | None) -> Rel
         weights=model.weights,
         slope_pm_kV=slope,
         slope_u_pm_kV=slope_u,
-        free_slope_pm_kV=free_slope,
-        intercept_pm=intercept,
-        free_covariance=free_covariance,
-        exponent=exponent,
-        exponent_u=exponent_u,
+        free_slope_pm_kV=math.nan if free is None else free.slope,
+        intercept_pm=math.nan if free is None else free.intercept,
+        free_covariance=np.full((2, 2), math.nan) if free is None else free.covariance,
+        exponent=math.nan if power is None else -power.slope,
+        exponent_u=math.nan if power is None else power.slope_u,
         chi2=chi2,
         degrees_of_freedom=n - 1,
         birge_ratio=math.sqrt(chi2 / (n - 1)) if n > 1 else math.nan,
@@ -333,6 +320,37 @@ def relate(model: MeasurementModel, scatter: float, repeat: float | None) -> Rel
         influence=_influence(model, planck, planck * slope_u / slope),
         repeat_u_relative=repeat,
     )
+
+
+def _free_lines(
+    model: MeasurementModel,
+    wavelengths: FloatArray,
+    voltages: FloatArray,
+    fitted: FloatArray,
+    log_wavelength: FloatArray,
+    log_voltage: FloatArray,
+) -> tuple[StraightLine | None, StraightLine | None]:
+    """Fit the line with an intercept, and the power law as a line of logarithms.
+
+    None where fewer than three voltages differ, or their uncertainties leave no line.
+    """
+    if len(set(model.displayed_kV.tolist())) < 3:
+        return None, None
+    inverse = 1.0 / voltages
+    try:
+        free = fit_straight_line(
+            inverse,
+            wavelengths,
+            np.outer(inverse, inverse) * log_voltage,
+            np.outer(fitted, fitted) * log_wavelength,
+        )
+        power = fit_straight_line(
+            np.log(voltages), np.log(wavelengths), log_voltage, log_wavelength
+        )
+    except InputError:
+        # The uncertainties exceed the range of the voltages: the tests are not possible.
+        return None, None
+    return free, power
 
 
 def _influence(model: MeasurementModel, planck: float, u: float) -> tuple[Influence, ...]:
