@@ -13,7 +13,15 @@ from hdetermine.records.results import Budget, WindowFit
 from hdetermine.report import rows, rows_budget, rows_routes, rows_scale, rows_source
 from hdetermine.report.plaintext import sentence
 from hdetermine.report.spoken import input_words, scan_of, sources
-from hdetermine.report.table import Cell, decimals, digits, plus_minus, united, with_uncertainty
+from hdetermine.report.table import (
+    Cell,
+    decimals,
+    digits,
+    plus_minus,
+    symbol,
+    united,
+    with_uncertainty,
+)
 
 
 @pytest.fixture(scope="module")
@@ -61,6 +69,16 @@ def test_degree_stands_close_and_ratio_has_no_unit():
     assert united("5.1", "deg") == "5.1°"
     assert united("0.999", "1") == "0.999"
     assert united("20", "kV") == "20\N{NARROW NO-BREAK SPACE}kV"
+
+
+@pytest.mark.parametrize(
+    ("plain_symbol", "letter", "below"),
+    [("g", "g", ""), ("delta_r", "δ", "r"), ("s_λ", "s", "λ"), ("t1", "t", "1"), ("U_0", "U", "0"),
+     ("7", "7", ""), ("", "–", "")],
+)  # fmt: skip
+def test_symbols(plain_symbol, letter, below):
+    cell = symbol(plain_symbol)
+    assert (cell.text, cell.subscript) == (letter, below)
 
 
 # --- tables -----------------------------------------------------------------------------------

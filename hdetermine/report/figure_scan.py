@@ -33,7 +33,7 @@ STEPS_BELOW = 14
 STEPS_ABOVE = 10
 """How far the close view reaches at most on either side of the cutoff, steps of the scan."""
 
-HEIGHT = 330.0
+HEIGHT = 300.0
 NORMAL_95 = 1.959964
 MARKS = (
     "Points: recorded counts with exact 68 % Poisson intervals (Garwood). Solid line: fitted "
@@ -182,7 +182,7 @@ def close_view_deg(scan: Scan, cutoff: Cutoff, curve: FittedCurve) -> tuple[floa
 def _edge(scan: Scan, cutoff: Cutoff, curve: FittedCurve, number: int) -> Picture:
     figure = canvas(HEIGHT)
     linear, log, residual = figure.subplots(
-        3, 1, sharex=True, gridspec_kw={"height_ratios": (4.0, 2.6, 1.8), "hspace": 0.12}
+        3, 1, sharex=True, gridspec_kw={"height_ratios": (3.7, 2.7, 2.1), "hspace": 0.12}
     )
     low, high = close_view_deg(scan, cutoff, curve)
     near = (curve.reading_deg >= low) & (curve.reading_deg <= high)
@@ -209,7 +209,7 @@ def _edge(scan: Scan, cutoff: Cutoff, curve: FittedCurve, number: int) -> Pictur
     residual.set_xlim(low, high)
     linear.set_ylabel("counts")
     log.set_ylabel("counts (log)")
-    residual.set_ylabel("residual / σ")
+    residual.set_ylabel("resid. / σ")
     residual.set_xlabel("glancing angle as read / °")
     linear.set_title(f"edge, {scan.tube_voltage_kV:g} kV")
     figure.align_ylabels()

@@ -200,7 +200,7 @@ def backward_rows(d: Determination) -> Table:
          with_uncertainty(back.spacing_pm, back.spacing_u_pm, "pm"),
          with_uncertainty(spacing.value, spacing.standard_uncertainty, "pm")),
     ]  # fmt: skip
-    return table("backwards", "The result read backwards",
+    return table("backwards", "Implied and stated values",
                  ("quantity", "implied by this run with h exact", "stated in the run sheet"), rows,
                  numeric=(1, 2))  # fmt: skip
 
@@ -213,8 +213,9 @@ def check_rows(d: Determination) -> Table:
          digits(check.limit, 3), Cell(sentence(check.meaning)))
         for check in d.checks
     ]  # fmt: skip
-    return table("checks", "Consistency checks", ("check", "outcome", "figure", "limit", "meaning"),
-                 rows, numeric=(2, 3))  # fmt: skip
+    headings = ("check", "outcome", "figure", "limit", "meaning")
+    caption = "Figure, limit and meaning of each check"
+    return table("checks", caption, headings, rows, numeric=(2, 3))
 
 
 def improvement_rows(d: Determination) -> Table | None:

@@ -59,12 +59,17 @@ def budget_rows(budget: Budget) -> Table:
         f"Uncertainty budget of {budget.measurand}",
         (
             *COLUMNS[:-2],
-            Column(f"contribution /{power_of_ten(exponent)} {unit}".replace(" × ", " "), True),
+            Column(_contribution_heading(exponent, unit), True),
             COLUMNS[-1],
         ),
         tuple(groups),
         _note(budget),
     )
+
+
+def _contribution_heading(exponent: int, unit: str) -> str:
+    power = power_of_ten(exponent).replace(" × ", "")
+    return f"contribution /\N{NO-BREAK SPACE}{power}\N{NO-BREAK SPACE}{unit}"
 
 
 def _exponent(number: float) -> int:

@@ -57,7 +57,9 @@ def scale_rows(d: Determination) -> Table:
              with_uncertainty(scale.edge_resolution_deg, scale.edge_resolution_u_deg, "deg"),
              Cell(f"{pull} standard uncertainties from that of the lines"))
         )  # fmt: skip
-    return table("scale", "Angle scale", ("quantity", "value", "from"), rows, numeric=(1,))
+    return table(
+        "scale", "Zero, resolution and smearing", ("quantity", "value", "from"), rows, numeric=(1,)
+    )
 
 
 def line_rows(d: Determination) -> Table | None:
@@ -122,7 +124,7 @@ def relation_rows(d: Determination) -> Table:
     if relation.repeat_u_relative is not None:
         rows.append((Cell("repeatability, from repeated scans"),
                      digits(100.0 * relation.repeat_u_relative, 2, "%"), Cell(NONE)))  # fmt: skip
-    return table("relation", "Inverse relation", ("quantity", "value", "remark"), rows,
+    return table("relation", "Slope, intercept and exponent", ("quantity", "value", "remark"), rows,
                  numeric=(1,))  # fmt: skip
 
 

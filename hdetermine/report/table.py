@@ -117,8 +117,11 @@ def words(text: str, detail: str = "", *, longest: int = 300) -> Cell:
 
 
 def symbol(text: str) -> Cell:
-    """A symbol in plain characters, ``delta_r``: Greek letters by name, one subscript."""
-    name, _, below = plain(text, 40).partition("_")
+    """A symbol in plain characters, ``delta_r`` or ``t1``: Greek by name, one subscript."""
+    name, mark, below = plain(text, 40).partition("_")
+    if not mark:
+        name = name.rstrip("0123456789") or name
+        below = plain(text, 40).removeprefix(name)
     letter = GREEK.get(name, name) or NONE
     return Cell(letter, None, "", GREEK.get(below, below))
 
@@ -136,7 +139,7 @@ def plus_minus(value: float, uncertainty: float, unit: str = "") -> Cell:
     """Value plus or minus an uncertainty, ``(6.626 ± 0.059) × 10⁻³⁴ J s``."""
     if not (math.isfinite(value) and math.isfinite(uncertainty)):
         return Cell(NONE)
-    text = typeset_plus_minus(value, uncertainty)
+    text = typeset_plus_minus(value, uncertainty).replace(" ", "\N{NO-BREAK SPACE}")
     if unit and not text.startswith("("):
         text = f"({text})"
     return Cell(united(text, unit), value)
