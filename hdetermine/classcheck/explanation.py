@@ -101,7 +101,13 @@ def catalogue(alignment: Alignment, unit: PlanckUnit) -> list[Slip]:
     ]
 
 
-def explain(alignment: Alignment, unit: PlanckUnit, *, against_itself: bool = False) -> Explanation:
+def explain(
+    alignment: Alignment,
+    unit: PlanckUnit,
+    *,
+    against_itself: bool = False,
+    skipped: frozenset[str] = frozenset(),
+) -> Explanation:
     """Find the slips that explain a claim.
 
     Parameters
@@ -112,6 +118,8 @@ def explain(alignment: Alignment, unit: PlanckUnit, *, against_itself: bool = Fa
         Unit of the claim.
     against_itself : bool
         True if the evidence was made from the claim's own cutoffs.
+    skipped : frozenset of str
+        Slips that are not tried, because what they need is not known.
 
     Returns
     -------
@@ -141,7 +149,7 @@ def explain(alignment: Alignment, unit: PlanckUnit, *, against_itself: bool = Fa
         return Explanation(True, True, True)
     anything = weigh(alignment, RIGHT, none, ANYTHING).log_mean[0] + math.log(ANYTHING_SHARE)
     bar = max(right + math.log(LEAST_ODDS), anything)
-    slips = catalogue(alignment, unit)
+    slips = [slip for slip in catalogue(alignment, unit) if slip.code not in skipped]
     for candidates, grid in ((_singles(slips), ordinary), (_pairs(slips), COARSE)):
         tried = STATED_ONLY if against_itself else grid
         named = _name(alignment, candidates, tried, bar, right)

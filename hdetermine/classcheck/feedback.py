@@ -1,0 +1,278 @@
+"""The page that goes back to a group: what the data say, what was claimed, what would explain it."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+from hdetermine.classcheck.classwork import GroupRow
+from hdetermine.classcheck.finding import VERDICT_WORDS, GroupFinding
+from hdetermine.classcheck.screens import Remark
+from hdetermine.classcheck.slip import NamedSlip
+from hdetermine.physics.reference import PLANCK_CONSTANT_J_S
+from hdetermine.report.plaintext import plain, sentence
+from hdetermine.report.table import (
+    Cell,
+    Table,
+    decimals,
+    digits,
+    percent,
+    plus_minus,
+    table,
+    with_uncertainty,
+    words,
+)
+
+SURELY_FITS = 1e4
+"""Odds from which "would produce" stands without a figure."""
+
+
+@dataclass(frozen=True, slots=True)
+class SlipText:
+    """A slip on the page."""
+
+    title: str
+    sentence: str
+    note: str
+    prediction: str
+    remedy: str
+
+
+@dataclass(frozen=True, slots=True)
+class Feedback:
+    """Content of one page, every text data and never markup.
+
+    Attributes
+    ----------
+    label : str
+        Group.
+    verdict, summary : str
+        In a few words, and in sentences.
+    faults : tuple of str
+        Why data or claim could not be used.
+    tables : tuple of Table
+        Comparison, cutoffs, shortcuts, screening: those that are not empty.
+    uncertainty : str
+        What the stated uncertainty is worth; may be empty.
+    slips : tuple of SlipText
+        Most specific first.
+    slip_lead : str
+        How the list of slips is to be read.
+    simulated : bool
+        True if the counts were computed.
+    """
+
+    label: str
+    verdict: str
+    summary: str
+    faults: tuple[str, ...]
+    tables: tuple[Table, ...]
+    uncertainty: str
+    slips: tuple[SlipText, ...]
+    slip_lead: str
+    simulated: bool
+
+
+def feedback_of(row: GroupRow) -> Feedback:
+    """Put together the page of one group."""
+    found = row.finding
+    faults = [sentence(text) for text in (found.data_fault, found.claim_fault) if text]
+    tables = (_comparison(found), _cutoffs(found), _shortcuts(found), _screening(found))
+    return Feedback(
+        label=row.label,
+        verdict=VERDICT_WORDS[found.verdict],
+        summary=_summary(found),
+        faults=tuple(faults),
+        tables=tuple(one for one in tables if one is not None),
+        uncertainty="" if found.planck is None else found.planck.uncertainty_sentence,
+        slips=tuple(_slip_text(slip) for slip in found.slips),
+        slip_lead=_slip_lead(found),
+        simulated=found.simulated,
+    )
+
+
+def _summary(found: GroupFinding) -> str:
+    parts = []
+    reanalysis, planck = found.reanalysis, found.planck
+    if reanalysis is not None:
+        inside = "agrees with" if abs(reanalysis.E_n) <= 1.0 else "does not agree with"
+        scans = "scan" if reanalysis.scans == 1 else "scans"
+        parts.append(
+            f"From {reanalysis.used} of {reanalysis.scans} {scans} the re-analysis finds "
+            f"h = {_planck(reanalysis.planck_J_s, reanalysis.expanded_uncertainty_J_s)}, which "
+            f"{inside} the SI value within its expanded uncertainty."
+        )
+    if planck is not None and reanalysis is not None:
+        claimed = _planck(planck.claimed_J_s, planck.claimed_u_J_s)
+        parts.append(
+            f"The claim is h = {claimed}: {_distance(planck.relative_difference)} what follows "
+            "from the same data."
+        )
+    elif planck is not None:
+        claimed = _planck(planck.claimed_J_s, planck.claimed_u_J_s)
+        parts.append(
+            f"The claim is h = {claimed}: {_distance(planck.relative_deviation)} the SI value."
+        )
+    parts.append(_VERDICT_SENTENCES.get(found.verdict, ""))
+    return " ".join(part for part in parts if part)
+
+
+_VERDICT_SENTENCES = {
+    "agrees": "Claim and data agree within what both state.",
+    "scatter": "Ordinary scatter of reading by people, 1 to 2 %, covers the difference; the stated "
+    "uncertainty does not.",
+    "differs": "Neither ordinary scatter of reading nor a slip of the catalogue produces these "
+    "numbers.",
+    "consistent": "The claimed cutoffs give the claimed h.",
+    "inconsistent": "The claimed cutoffs do not give the claimed h.",
+    "alone": "Without data and cutoffs the claim can only be set beside the SI value.",
+}
+
+
+def _planck(value: float, u: float) -> str:
+    if math.isfinite(u) and u > 0.0:
+        return plus_minus(value, u, "J s").text
+    return digits(value, 4, "J s").text
+
+
+def _distance(relative: float) -> str:
+    if relative <= -1.0 or abs(relative) >= 1.0:
+        return f"{digits(1.0 + relative, 3).text} times"
+    if abs(relative) < 5e-5:
+        return "the same as"
+    side = "above" if relative > 0.0 else "below"
+    return f"{decimals(100.0 * abs(relative), 2, '%').text} {side}"
+
+
+def _comparison(found: GroupFinding) -> Table | None:
+    reanalysis, planck = found.reanalysis, found.planck
+    if reanalysis is None and planck is None:
+        return None
+    rows = []
+    if reanalysis is not None:
+        u = reanalysis.standard_uncertainty_J_s
+        deviation = percent(reanalysis.relative_deviation)
+        rows.append([
+            words("from the data"), with_uncertainty(reanalysis.planck_J_s, u),
+            digits(u / reanalysis.planck_J_s * 100.0, 2, "%"), deviation,
+            decimals(reanalysis.E_n, 2),
+        ])  # fmt: skip
+    if planck is not None:
+        u = planck.claimed_u_J_s
+        shown = math.isfinite(u) and u > 0.0
+        value = with_uncertainty(planck.claimed_J_s, u) if shown else digits(planck.claimed_J_s, 4)
+        far = abs(planck.relative_deviation) >= 1.0
+        ratio = planck.claimed_J_s / PLANCK_CONSTANT_J_S
+        deviation = words(f"× {digits(ratio, 3).text}") if far else percent(
+            planck.relative_deviation)  # fmt: skip
+        rows.append([
+            words("claimed"), value, digits(100.0 * abs(u / planck.claimed_J_s), 2, "%"),
+            deviation, decimals(planck.E_n, 2),
+        ])  # fmt: skip
+    rows.append([
+        words("SI value, exact"), digits(PLANCK_CONSTANT_J_S, 9), digits(None), digits(None),
+        digits(None),
+    ])  # fmt: skip
+    note = (
+        "In parentheses the standard uncertainty in units of the last place. Eₙ is the deviation "
+        "from the SI value over twice the standard uncertainty (over U for the data); between "
+        "−1 and 1 they agree."
+    )
+    return table(
+        "planck", "Planck constant", ("", "h / J s", "u(h)/h", "deviation from the SI value", "Eₙ"),
+        rows, numeric=(1, 2, 3, 4), note=note,
+    )  # fmt: skip
+
+
+def _cutoffs(found: GroupFinding) -> Table | None:
+    if not found.cutoffs:
+        return None
+    with_angle = any(math.isfinite(line.claimed_angle_deg) for line in found.cutoffs)
+    with_length = any(math.isfinite(line.claimed_wavelength_pm) for line in found.cutoffs)
+    headings = ["tube voltage / kV", "angle from data / °", "λ from data / pm"]
+    headings += ["claimed angle / °"] if with_angle else []
+    headings += ["claimed λ / pm"] if with_length else []
+    headings += ["claim over data"] if with_angle or with_length else []
+    rows = []
+    for line in found.cutoffs:
+        row = [
+            digits(line.tube_voltage_kV, 3), decimals(line.angle_deg, 2),
+            with_uncertainty(line.wavelength_pm, line.standard_uncertainty_pm),
+        ]  # fmt: skip
+        row += [decimals(line.claimed_angle_deg, 2)] if with_angle else []
+        row += [digits(line.claimed_wavelength_pm, 4)] if with_length else []
+        row += [_ratio(line.relative_difference)] if with_angle or with_length else []
+        rows.append(row)
+    return table(
+        "cutoffs", "Cutoffs", headings, rows, numeric=range(len(headings)),
+        note="Angles are glancing angles, corrected for the goniometer's zero. The uncertainty is "
+        "that of each cutoff alone, without what moves all of them together.",
+    )  # fmt: skip
+
+
+def _ratio(relative: float) -> Cell:
+    if not math.isfinite(relative):
+        return digits(None)
+    if abs(relative) < 0.5:
+        return percent(relative, 1)
+    return words(f"× {digits(1.0 + relative, 3).text}")
+
+
+def _shortcuts(found: GroupFinding) -> Table | None:
+    if not found.shortcuts or found.reanalysis is None:
+        return None
+    data = found.reanalysis.planck_J_s
+    rows = [
+        [words(one.title), digits(one.planck_J_s, 4), percent(one.planck_J_s / data - 1.0, 1)]
+        for one in found.shortcuts
+    ]
+    return table(
+        "shortcuts", "What common shortcuts would give with these counts",
+        ("shortcut", "h / J s", "against the re-analysis"), rows, numeric=(1, 2),
+        note="For comparison; nothing here says that one was taken.",
+    )  # fmt: skip
+
+
+def _screening(found: GroupFinding) -> Table | None:
+    if not found.remarks:
+        return None
+    rows = [[words(one.title), words(one.where), words(sentence(one.sentence), _figures(one),
+             longest=600)] for one in found.remarks]  # fmt: skip
+    return table("screening", "Screening of the counts", ("what", "where", "meaning"), rows)
+
+
+def _figures(remark: Remark) -> str:
+    parts = []
+    if remark.statistic is not None and remark.figure:
+        parts.append(f"{remark.figure}: {digits(remark.statistic, 3).text}")
+    if remark.threshold:
+        parts.append(f"bar: {remark.threshold}")
+    if remark.class_chance is not None:
+        chance = remark.class_chance
+        text = "below 10⁻⁶" if chance < 1e-6 else digits(chance, 1).text
+        parts.append(f"chance of a false alarm in the class: {text}")
+    return f"({'; '.join(parts)})" if parts else ""
+
+
+def _slip_lead(found: GroupFinding) -> str:
+    if not found.slips:
+        return ""
+    if len(found.slips) == 1:
+        return "One slip of the catalogue would produce these numbers."
+    return (
+        f"Each of these {len(found.slips)} would produce these numbers; the most specific stands "
+        "first. The notebook can tell which it was, if any."
+    )
+
+
+def _slip_text(slip: NamedSlip) -> SlipText:
+    prediction = ""
+    if math.isfinite(slip.predicted_J_s):
+        prediction = f"From the group's own data it gives h = {_planck(slip.predicted_J_s, 0.0)}."
+    return SlipText(
+        title=slip.title[:1].upper() + slip.title[1:],
+        sentence=slip.sentence,
+        note=plain(slip.note),
+        prediction=prediction,
+        remedy=slip.remedy,
+    )
