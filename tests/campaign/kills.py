@@ -172,6 +172,8 @@ def main() -> int:
     parser.add_argument("--demo", default="", help="name of the demo; a fitting one if not given")
     parser.add_argument("--seed", type=int, default=1, help="of the random moments")
     options = parser.parse_args()
+    # A job in the background of a shell inherits an ignored SIGINT, and hands it on.
+    signal.signal(signal.SIGINT, signal.default_int_handler)
     demo = options.demo or ("molybdenum_rocksalt" if options.command == "analyse" else "class")
     chance = random.Random(options.seed)
     outcomes: Counter[str] = Counter()
