@@ -151,7 +151,8 @@ def digits(number: float | None, significant: int = 2, unit: str = "") -> Cell:
         return Cell(NONE)
     if math.isinf(number):
         return Cell(f"{MINUS if number < 0 else ''}∞", number)
-    return Cell(united(typeset_figure(number, significant), unit), number)
+    text = typeset_figure(number, significant).replace(" ", "\N{NO-BREAK SPACE}")
+    return Cell(united(text, unit), number)
 
 
 def decimals(number: float | None, places: int, unit: str = "", *, signed: bool = False) -> Cell:
