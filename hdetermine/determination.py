@@ -17,13 +17,8 @@ from hdetermine.inference.anglescale import angle_scale
 from hdetermine.inference.cutoffs import find_cutoffs
 from hdetermine.inference.montecarlo import monte_carlo_route
 from hdetermine.inference.posterior import posterior_route
-from hdetermine.inference.relation import (
-    add_scatter,
-    birge_ratio_of,
-    build_model,
-    learn_repeatability,
-    relate,
-)
+from hdetermine.inference.relation import build_model, relate
+from hdetermine.inference.scatter import add_scatter, birge_ratio_of, learn_repeatability
 from hdetermine.judgement import compare, consistency, read_backwards
 from hdetermine.records.results import (
     Budget,
