@@ -31,6 +31,7 @@ FloatArray = NDArray[np.float64]
 
 NOTABLE_SCATTER = 2.0  # chi-square per degree of freedom
 LEARNT = 0.9  # lines fix the spacing if they shrink its variance below this fraction
+FORM_FLOOR = 0.005  # of the width: no line stands nearer to its place than its form is known
 RESOLUTION_FLOOR = 0.01  # relative; the form of the kernel is never known better
 BLEND_U = 2e-5  # relative; satellites and doublet ratio against the tabulated peak
 
@@ -92,6 +93,8 @@ def angle_scale(run: Run) -> AngleScale:
                 [-slope * prior_variance, prior_variance],
             ]
         )
+    width = float(np.average([line.fwhm_deg for line in used], weights=weight))
+    covariance[0, 0] += (FORM_FLOOR * width) ** 2
     zero_quantity = replace(
         apparatus.goniometer.zero_deg,
         value=float(zero),

@@ -26,6 +26,10 @@ FloatArray = NDArray[np.float64]
 
 ORDERS = (1, 2, 3)
 _REACH_WIDTHS = 2.2
+_NARROW_REACH_DEG = 0.35
+_LOCAL = 6  # position, log width, kernel, and level, slope and bend of the log background
+_BACKGROUND_U = (3.0, 0.7)  # weak priors of slope and bend over half the window
+_WIDEST_DEG = 0.8
 _KERNEL_U = 0.29  # of a rectangular distribution between Gaussian and triangle
 
 
@@ -199,21 +203,43 @@ def fit_lines(
     tuple of FittedLine
         Converged fits only; insignificant lines are left to the caller.
     """
-    results: list[FittedLine] = []
-    for cluster in _clusters(covered(scan, every, zero_deg, 0.15), 0.35):
-        width = _width_guess(scan, cluster, zero_deg)
-        fit = None
-        for _ in range(3):
-            fit = _fit_cluster(scan, cluster, zero_deg, width, dead_time_us, dead_time_model)
-            if fit is None:
-                break
-            fitted = math.exp(float(np.clip(fit.parameters[1], -4.0, 1.0)))
-            if abs(fitted / width - 1.0) < 0.15:
-                break
-            width = min(max(fitted, 0.5 * width), 2.0 * width)
-        if fit is not None and fit.converged:
-            results.extend(_harvest(scan.name, cluster, fit))
-    return tuple(results)
+    inside = covered(scan, every, zero_deg, 0.15)
+    reach = _NARROW_REACH_DEG
+    fits: list[tuple[tuple[Feature, ...], Maximum]] = []
+    for _ in range(2):
+        fits = []
+        for cluster in _clusters(inside, reach):
+            fit = _settle_width(scan, cluster, zero_deg, dead_time_us, dead_time_model)
+            if fit is not None and fit.converged:
+                fits.append((cluster, fit))
+        widest = max((_width(fit) for _, fit in fits), default=0.0)
+        if _REACH_WIDTHS * min(widest, _WIDEST_DEG) <= reach:
+            break
+        # Broad lines overlap with their neighbours: fit those together.
+        reach = _REACH_WIDTHS * min(widest, _WIDEST_DEG)
+    return tuple(line for cluster, fit in fits for line in _harvest(scan.name, cluster, fit))
+
+
+def _width(fit: Maximum) -> float:
+    return math.exp(float(np.clip(fit.parameters[1], -4.0, 1.0)))
+
+
+def _settle_width(
+    scan: Scan,
+    cluster: tuple[Feature, ...],
+    zero_deg: float,
+    dead_time_us: float,
+    dead_time_model: DeadTimeModel,
+) -> Maximum | None:
+    """Fit a cluster in a window that suits the width it finds."""
+    width = _width_guess(scan, cluster, zero_deg)
+    fit = None
+    for _ in range(3):
+        fit = _fit_cluster(scan, cluster, zero_deg, width, dead_time_us, dead_time_model)
+        if fit is None or abs(_width(fit) / width - 1.0) < 0.15:
+            break
+        width = min(max(_width(fit), 0.5 * width), 2.0 * width)
+    return fit
 
 
 def _width_guess(scan: Scan, cluster: tuple[Feature, ...], zero_deg: float) -> float:
@@ -225,7 +251,7 @@ def _width_guess(scan: Scan, cluster: tuple[Feature, ...], zero_deg: float) -> f
         return 0.25
     above = rate - np.quantile(rate, 0.2)
     width = float(above.clip(min=0.0).sum()) * scan.step_deg / max(float(above.max()), 1e-9)
-    return float(np.clip(width / len(cluster), 1.2 * scan.step_deg, 0.8))
+    return float(np.clip(width / len(cluster), 1.2 * scan.step_deg, _WIDEST_DEG))
 
 
 def _fit_cluster(
@@ -239,13 +265,13 @@ def _fit_cluster(
     reach = max(_REACH_WIDTHS * width_deg, 4.0 * scan.step_deg)
     low, high = cluster[0].angle_deg + zero_deg - reach, cluster[-1].angle_deg + zero_deg + reach
     take = (scan.reading_deg >= low) & (scan.reading_deg <= high)
-    size = 5 + len(cluster)
+    size = _LOCAL + len(cluster)
     if int(take.sum()) < size + 1:
         return None
     readings, dwell = scan.reading_deg[take], scan.dwell_s[take]
     counts = scan.counts[take].astype(float)
     half = 0.5 * (readings[-1] - readings[0])
-    position = (readings - readings[0]) / half - 1.0
+    powers = ((readings - readings[0]) / half - 1.0) ** np.arange(3)[:, np.newaxis]
     dead_time_s = dead_time_us * 1e-6
 
     def profiles(place: FloatArray) -> FloatArray:
@@ -255,8 +281,8 @@ def _fit_cluster(
         return np.stack([_feature_profile(readings - place[0], f, kernel) for f in cluster])
 
     def model(parameters: FloatArray) -> tuple[FloatArray, FloatArray]:
-        base = np.exp(np.clip(parameters[3] + parameters[4] * position, -30.0, 30.0))
-        strength = np.exp(np.clip(parameters[5:], -30.0, 30.0))
+        base = np.exp(np.clip(parameters[3:_LOCAL] @ powers, -30.0, 30.0))
+        strength = np.exp(np.clip(parameters[_LOCAL:], -30.0, 30.0))
         shapes = profiles(parameters[:3])
         rate = base + strength @ shapes
         columns = []
@@ -265,14 +291,14 @@ def _fit_cluster(
             step[i] = 1e-4
             ahead, behind = profiles(parameters[:3] + step), profiles(parameters[:3] - step)
             columns.append(strength @ (ahead - behind) / 2e-4)
-        columns += [base, base * position, *(strength[:, np.newaxis] * shapes)]
+        columns += [*(base * powers), *(strength[:, np.newaxis] * shapes)]
         slope = dwell * recorded_slope(rate, dead_time_s, dead_time_model)
         expected = dwell * recorded_rate(rate, dead_time_s, dead_time_model)
         return np.maximum(expected, 1e-9), slope[:, np.newaxis] * np.stack(columns, axis=1)
 
-    precision = np.array([0.0, 0.0, _KERNEL_U**-2, 0.0, 1.0 / 9.0] + [0.0] * len(cluster))
-    centre = np.zeros(size)
-    centre[2] = 0.5
+    precision, centre = np.zeros(size), np.zeros(size)
+    precision[2], centre[2] = _KERNEL_U**-2, 0.5
+    precision[4:_LOCAL] = np.array(_BACKGROUND_U) ** -2.0
 
     def prior(parameters: FloatArray) -> tuple[float, FloatArray, FloatArray]:
         gradient = precision * (parameters - centre)
@@ -281,10 +307,10 @@ def _fit_cluster(
     floor = max(float(np.min(counts / dwell)), 0.2 / float(dwell[0]))
     height = max(float(np.max(counts / dwell)) - floor, floor)
     start = np.array(
-        [zero_deg, math.log(width_deg), 0.5, math.log(floor), 0.0]
+        [zero_deg, math.log(width_deg), 0.5, math.log(floor), 0.0, 0.0]
         + [math.log(height * width_deg)] * len(cluster)
     )
-    limits = np.array([0.5 * width_deg, 0.4, 0.3, 1.0, 1.0] + [1.0] * len(cluster))
+    limits = np.array([0.5 * width_deg, 0.4, 0.3, 1.0, 1.0, 1.0] + [1.0] * len(cluster))
     return maximise(counts, model, prior, start, limits)
 
 
@@ -294,7 +320,7 @@ def _harvest(scan: str, cluster: tuple[Feature, ...], fit: Maximum) -> Iterator[
     freedom = max(fit.expected.size - fit.parameters.size, 1)
     misfit = max(math.sqrt(fit.deviance / freedom), 1.0)
     width = math.exp(float(fit.parameters[1]))
-    strongest = int(np.argmax(fit.parameters[5:]))
+    strongest = int(np.argmax(fit.parameters[_LOCAL:]))
     feature = cluster[strongest]
     yield FittedLine(
         scan=scan,
@@ -305,6 +331,6 @@ def _harvest(scan: str, cluster: tuple[Feature, ...], fit: Maximum) -> Iterator[
         fwhm_u_deg=width * float(u[1]) * misfit,
         triangular_fraction=float(np.clip(fit.parameters[2], 0.0, 1.0)),
         triangular_fraction_u=float(u[2]) * misfit,
-        significance=1.0 / max(float(u[5 + strongest]), 1e-6),
+        significance=1.0 / max(float(u[_LOCAL + strongest]), 1e-6),
         misfit=misfit,
     )
