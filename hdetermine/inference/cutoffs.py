@@ -18,7 +18,8 @@ from hdetermine.inference.edgemodel import (
     likelihood_sides,
 )
 from hdetermine.inference.firstfit import Edge, first_fit, first_guesses
-from hdetermine.inference.shared import SharedTerms, edge_responses, share
+from hdetermine.inference.refusals import uncertain
+from hdetermine.inference.shared import SharedTerms, edge_responses, fit_with, share
 from hdetermine.inference.spacing import crystal_spacing_pm
 from hdetermine.physics.bragg import wavelength_pm
 from hdetermine.records.quantity import Quantity
@@ -67,11 +68,16 @@ def find_cutoffs(
             edges[scan.name] = outcome
     shared = None
     if edges:
-        scale, shared = _share(run, scale, tuple(edge.fit for edge in edges.values()))
-        edges = {
-            name: replace(edge, given=fit.given, fit=fit)
-            for (name, edge), fit in zip(edges.items(), shared.fits, strict=True)
-        }
+        # A scan that the model does not describe would drag all the others along.
+        first = {name: edge.fit for name, edge in edges.items()}
+        voices = {
+            name: fit for name, fit in first.items() if _misfit(fit) <= LARGEST_MISFIT
+        } or first
+        scale, shared = _share(run, scale, tuple(voices.values()))
+        fits = dict(zip(voices, shared.fits, strict=True))
+        for name, edge in edges.items():
+            fit = fits[name] if name in fits else fit_with(edge.fit, shared)
+            edges[name] = replace(edge, given=fit.given, fit=fit)
     cutoffs = []
     for done, scan in enumerate(run.scans):
         if scan.name in refused or shared is None:
@@ -81,6 +87,11 @@ def find_cutoffs(
         if progress is not None:
             progress("edges", done + 1, len(run.scans))
     return scale, shared, tuple(cutoffs)
+
+
+def _misfit(fit: EdgeFit) -> float:
+    """Deviance per degree of freedom."""
+    return fit.maximum.deviance / max(fit.degrees_of_freedom, 1)
 
 
 def _share(
@@ -170,7 +181,7 @@ def _cutoff(run: Run, scale: AngleScale, edge: Edge, shared: SharedTerms) -> Cut
         return _refusal(scan, "the fit did not converge")
     heaviest = family.heaviest
     freedom = max(heaviest.degrees_of_freedom, 1)
-    misfit = heaviest.maximum.deviance / freedom
+    misfit = _misfit(heaviest)
     if misfit > LARGEST_MISFIT:
         return _refusal(
             scan, f"the model does not describe the edge (deviance {misfit:.0f} per point)"
@@ -179,6 +190,9 @@ def _cutoff(run: Run, scale: AngleScale, edge: Edge, shared: SharedTerms) -> Cut
     if not edge.points.all():
         lost = ", ".join(f"{angle:g}°" for angle in scan.reading_deg[~edge.points])
         remarks.append(f"dropped out, not used: the point at {lost}")
+    reason = uncertain(family.reading_deg - scale.zero.value, family.counting_u_deg)
+    if reason:
+        return _refusal(scan, reason)
     widening = 1.0
     if misfit > 1.0 + 3.0 * math.sqrt(2.0 / freedom):
         widening = math.sqrt(misfit)

@@ -58,6 +58,11 @@ def saturated(fit: EdgeFit) -> str:
     dead = float(recorded.max()) * fit.given.dead_time_us * 1e-6
     paralysable = fit.given.dead_time_model == "paralysable"
     limit = LARGEST_DEAD_FRACTION_PARALYSABLE if paralysable else LARGEST_DEAD_FRACTION
+    if dead >= 1.0:
+        return (
+            f"saturation: {recorded.max():.0f} recorded counts a second are more than a dead time "
+            f"of {fit.given.dead_time_us:.0f} µs lets through"
+        )
     if dead > limit:
         return (
             f"saturation: {recorded.max():.0f} recorded counts a second leave the counter dead "
@@ -88,9 +93,12 @@ def insignificant(fit: EdgeFit) -> str:
     plain = maximise(window.counts, model, prior, start, np.full(2, 1.0))
     if plain.deviance - fit.maximum.deviance < EDGE_SIGNIFICANCE:
         return "too few counts: no edge stands out from the background"
-    relative = math.radians(fit.reading_u_deg) / math.tan(
-        math.radians(max(fit.reading_deg - fit.given.zero_deg, 0.1))
-    )
+    return uncertain(fit.reading_deg - fit.given.zero_deg, fit.reading_u_deg)
+
+
+def uncertain(angle_deg: float, u_deg: float) -> str:
+    """Say whether a cutoff at this true angle would be too uncertain to be of use."""
+    relative = math.radians(u_deg) / math.tan(math.radians(max(angle_deg, 0.1)))
     if relative > LARGEST_RELATIVE_U:
         return f"too few counts: the cutoff would be uncertain by {100 * relative:.0f} %"
     return ""
@@ -104,8 +112,10 @@ def dropouts(scan: Scan, fit: EdgeFit) -> NDArray[np.bool_]:
     counts = fit.window.counts
     for i, index in enumerate(where):
         missing = expected[i] - counts[i]
-        if missing > 0 and missing**2 / expected[i] > DROPOUT_DEVIANCE and counts[i] < 0.3 * (
-            expected[i]
+        if (
+            missing > 0
+            and missing**2 / expected[i] > DROPOUT_DEVIANCE
+            and counts[i] < 0.3 * (expected[i])
         ):
             drop[index] = True
     return drop if int(drop.sum()) <= 2 else np.zeros_like(drop)

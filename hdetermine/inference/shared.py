@@ -241,6 +241,13 @@ def _refit(
     return tuple(refitted)
 
 
+def fit_with(fit: EdgeFit, shared: SharedTerms) -> EdgeFit:
+    """Fit an edge that had no say in the shared numbers, with those as its priors."""
+    mapping = _map(fit, shared.reference_sine, shared.width_free)
+    numbers = np.array([quantity.value for quantity in shared.inputs])
+    return _refit((fit,), [mapping], numbers, shared.width_free)[0]
+
+
 def _quantities(
     numbers: FloatArray, covariance: FloatArray, stated: Quantity
 ) -> tuple[Quantity, ...]:
