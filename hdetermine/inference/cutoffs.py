@@ -31,6 +31,7 @@ FloatArray = NDArray[np.float64]
 
 LARGEST_MISFIT = 12.0  # deviance per degree of freedom
 LEAST_WEIGHT = 1e-3  # of a fit whose responses are worth the work
+LEAST_FALL = 0.25  # of the deviance, that a width of their own gives the edges
 RESOLUTION_TOLERANCE = 3.0  # in standard uncertainties, between edges and lines
 
 
@@ -145,7 +146,8 @@ def _likelihood_u(held: SharedTerms, free: SharedTerms, stated: Quantity) -> flo
         for before, after in zip(held.fits, free.fits, strict=True)
     )  # fmt: skip
     width = free.inputs[0]
-    supported = abs(width.value - stated.value) / math.sqrt(max(fall, 1e-6))
+    # Falls far below one are within what the steps leave open, and may even be negative.
+    supported = abs(width.value - stated.value) / math.sqrt(max(fall, LEAST_FALL))
     return max(width.standard_uncertainty, supported)
 
 
