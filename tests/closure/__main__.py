@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import tempfile
 from collections.abc import Callable, Sequence
 from functools import partial
 from pathlib import Path
@@ -20,7 +21,7 @@ from .picture import picture
 from .record import RunRecord
 from .settings import OFF_THE_MODEL, PINNED, SETTINGS, SHIFTED, Setting
 from .study import Worker, run_study
-from .tables import document, table
+from .tables import analysis_table, document, route_table, table
 from .tally import StudyTally, tally
 
 Runner = Callable[[Setting, Worker | None], list[RunRecord]]
@@ -31,10 +32,15 @@ Runner = Callable[[Setting, Worker | None], list[RunRecord]]
 @click.option("--jobs", type=click.IntRange(min=1), default=os.cpu_count() or 1)
 @click.option("--only", default="", help="Only studies whose name holds this text.")
 @click.option("--independent/--own", default=False, help="Spectra of spekpy instead of our own.")
-@click.option("--cache", type=click.Path(path_type=Path), help="Folder for spekpy's spectra.")
+@click.option(
+    "--cache",
+    type=click.Path(path_type=Path),
+    default=Path(tempfile.gettempdir()) / "hdetermine-spekpy",
+    help="Folder that keeps spekpy's spectra.",
+)
 @click.option("-o", "--output", type=click.Path(path_type=Path), help="Folder for the results.")
 def main(
-    runs: int, jobs: int, only: str, independent: bool, cache: Path | None, output: Path | None
+    runs: int, jobs: int, only: str, independent: bool, cache: Path, output: Path | None
 ) -> None:
     """Simulate runs whose truth is known, analyse them, and print what came out."""
     console = Console(stderr=True)
@@ -50,15 +56,18 @@ def main(
             def report(done: int, _of: int) -> None:
                 bar.update(task, completed=done)
 
-            collected[setting.name] = run_study(setting, runs, jobs, report, worker)
-            return collected[setting.name]
+            records = run_study(setting, runs, jobs, report, worker)
+            collected[setting.name] = records
+            # A long study shows what it has as it goes.
+            click.echo(document(f"Finished: {setting.name}", [tally(setting.name, records)]))
+            return records
 
         if independent:
             texts, tallies = _independent(runner, only, cache, runs, jobs, bar)
         else:
             texts, tallies = _own(runner, only)
     text = "\n".join(texts)
-    click.echo(text)
+    click.echo(f"## All studies\n\n{route_table(tallies)}\n{analysis_table(tallies)}")
     if output is not None:
         output.mkdir(parents=True, exist_ok=True)
         name = "independent" if independent else "closure"
@@ -90,7 +99,9 @@ def _own(runner: Runner, only: str) -> tuple[list[str], list[StudyTally]]:
     for setting in _chosen((PINNED,), only):
         records = runner(setting, None)
         found = [tally(setting.name, records)]
-        texts.append(document("Spread of cutoffs", found, over_the_bound(setting, records)))
+        bounds = over_the_bound(setting, records)
+        click.echo(bounds)
+        texts.append(document("Spread of cutoffs", found, bounds))
         tallies += found
     return texts, tallies
 
@@ -130,12 +141,10 @@ def over_the_bound(setting: Setting, records: Sequence[RunRecord]) -> str:
 
 
 def _independent(
-    runner: Runner, only: str, cache: Path | None, runs: int, jobs: int, bar: Progress
+    runner: Runner, only: str, cache: Path, runs: int, jobs: int, bar: Progress
 ) -> tuple[list[str], list[StudyTally]]:
     from .independent import INDEPENDENT, Library, independent_run
 
-    if cache is None:
-        raise click.UsageError("name a folder for spekpy's spectra with --cache")
     tallies = []
     for tube in INDEPENDENT:
         if only.casefold() not in tube.setting.name.casefold():

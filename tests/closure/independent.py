@@ -260,22 +260,43 @@ class IndependentTube:
     angle_deg: float = 12.0
 
 
-def _mo(name: str, **changes: Any) -> Setting:
-    return replace(BASE, name=name, **changes)
+def _lithium_fluoride(name: str, anode: str, lines_scan: tuple[float, float]) -> Setting:
+    return replace(COPPER, name=name, anode=anode, lines_scan=lines_scan)
 
 
 INDEPENDENT: tuple[IndependentTube, ...] = (
-    IndependentTube(_mo("spekpy molybdenum, casim"), "Mo"),
-    IndependentTube(_mo("spekpy molybdenum, kqp"), "Mo", "kqp"),
-    IndependentTube(_mo("spekpy molybdenum, casim, 30 deg"), "Mo", "casim", 30.0),
-    IndependentTube(_mo("spekpy rhodium, casim", anode="Rh"), "Rh"),
+    IndependentTube(replace(BASE, name="spekpy Mo, NaCl"), "Mo"),
+    IndependentTube(replace(BASE, name="spekpy Mo (kqp), NaCl"), "Mo", "kqp"),
     IndependentTube(
         replace(
-            COPPER,
-            name="spekpy tungsten, casim, lithium fluoride",
-            anode="W",
-            lines_scan=(14.0, 24.0),
+            BASE,
+            name="spekpy Mo at 30 deg, KBr, Gaussian kernel",
+            crystal="KBr",
+            to_deg=9.0,
+            resolution_deg=0.3,
+            truth={"kernel": "gaussian"},
         ),
-        "W",
+        "Mo",
+        angle_deg=30.0,
     ),
+    IndependentTube(
+        replace(
+            BASE,
+            name="spekpy Rh, NaCl, box kernel",
+            anode="Rh",
+            truth={"kernel": "box", "resolution_deg": 0.3},
+        ),
+        "Rh",
+    ),
+    IndependentTube(
+        replace(
+            BASE,
+            name="spekpy Ag, NaCl, triangular kernel",
+            anode="Ag",
+            truth={"kernel": "triangular"},
+        ),
+        "Ag",
+    ),
+    IndependentTube(_lithium_fluoride("spekpy Cu, LiF", "Cu", (18.0, 25.0)), "Cu"),
+    IndependentTube(_lithium_fluoride("spekpy W, LiF", "W", (14.0, 24.0)), "W"),
 )
