@@ -4,7 +4,8 @@
     python tests/campaign/kills.py --trials 60 --command check
 
 Each trial lays a whole old set of outputs beside a file of somebody else's, starts the command
-with another seed or setting, and sends SIGINT, SIGTERM or SIGKILL after a random time. Then:
+with another seed or setting, and sends SIGINT, SIGTERM or SIGKILL: after a random time, among the
+imports at its start, or some milliseconds after it began to write. Then:
 
 * every visible output is one of the old set or one of the new; after SIGINT and SIGTERM the set
   is the old or the new one as a whole, nothing hidden is left in the output folder and nothing in
@@ -30,7 +31,7 @@ import time
 from collections import Counter
 from pathlib import Path
 
-from hdetermine.files.atomic import write_outputs
+from hdetermine.files.atomic import LOCK, write_outputs
 from hdetermine.files.shipped import shipped_folder
 
 SIGNALS = (signal.SIGINT, signal.SIGTERM, signal.SIGKILL)
@@ -82,8 +83,12 @@ class Campaign:
             self.sets.append(files_in(out))
         assert self.sets[0] != self.sets[1], "the two sets must differ"
 
-    def trial(self, number: int, delay: float) -> tuple[str, list[str]]:
-        """Outcome (`old`, `new`, `finished by the next run`) and complaints."""
+    def trial(self, number: int, delay: float, writing: bool) -> tuple[str, list[str]]:
+        """Outcome (`old`, `new`, `finished by the next run`) and complaints.
+
+        The signal comes `delay` seconds after the start or, if `writing`, after the lock of the
+        output folder was seen.
+        """
         for folder in (self.out, self.temporary):
             shutil.rmtree(folder, ignore_errors=True)
         self.temporary.mkdir()
@@ -95,6 +100,8 @@ class Campaign:
             env={**os.environ, "TMPDIR": str(self.temporary)},
             start_new_session=True,
         )
+        while writing and process.poll() is None and not (self.out / LOCK).exists():
+            time.sleep(0.0005)
         time.sleep(delay)
         if number == signal.SIGKILL:
             process.kill()
@@ -186,13 +193,15 @@ def main() -> int:
         print(f"{options.command} of {demo} takes {campaign.duration:.1f} s undisturbed")
         for trial in range(options.trials):
             number = SIGNALS[trial % len(SIGNALS)]
-            # Any time, the start with its imports, and the end with its writing.
-            span = ((0.0, 1.1), (0.0, 0.05), (0.9, 1.1))[trial // len(SIGNALS) % 3]
-            delay = START_s + chance.uniform(*span) * campaign.duration
-            outcome, wrong = campaign.trial(number, delay)
+            writing = trial // len(SIGNALS) % 3 == 2
+            span = (campaign.duration, 0.05 * campaign.duration, 0.03)[trial // len(SIGNALS) % 3]
+            delay = chance.uniform(0.0, span) + (0.0 if writing else START_s)
+            outcome, wrong = campaign.trial(number, delay, writing)
             outcomes[f"{number.name}: {outcome}"] += 1
             faults += bool(wrong)
-            print(f"{trial + 1:4d} {number.name:8s} {delay:6.2f} s  {outcome}  {'; '.join(wrong)}")
+            print(
+                f"{trial + 1:4d} {number.name:8s} {delay:6.3f} s {'of writing' if writing else '':10s}  {outcome}  {'; '.join(wrong)}"
+            )
     for outcome, count in sorted(outcomes.items()):
         print(f"{count:4d} x {outcome}")
     print(f"{options.trials} trials, {faults} with a fault")
