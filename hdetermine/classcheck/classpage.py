@@ -29,6 +29,7 @@ MARKS: dict[Verdict, str] = {
     "alone": "○", "nothing": "×",
 }  # fmt: skip
 """One sign a verdict, beside its words: nothing is said by colour alone."""
+GOOD: frozenset[Verdict] = frozenset(("agrees", "scatter", "consistent", "no claim"))
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,6 +47,7 @@ class ClassLine:
     label: str
     href: str
     mark: str
+    good: bool
     verdict: str
     order: int
     fault: str
@@ -81,6 +83,7 @@ def feedback_page(row: GroupRow, title: str, templates: Templates) -> bytes:
         "feedback": feedback_of(row),
         "class_title": title,
         "mark": MARKS[row.finding.verdict],
+        "good": row.finding.verdict in GOOD,
         "program": f"hdetermine {__version__}",
     }
     return render_page(templates, FEEDBACK_TEMPLATE, content)
@@ -107,6 +110,7 @@ def _line(row: GroupRow) -> ClassLine:
         label=row.label,
         href=feedback_name(row),
         mark=MARKS[found.verdict],
+        good=found.verdict in GOOD,
         verdict=VERDICT_WORDS[found.verdict],
         order=list(VERDICT_WORDS).index(found.verdict),
         fault=sentence(fault_text(row)),

@@ -19,6 +19,9 @@ _SQUARES = float(FILTER @ FILTER)
 # Sum over all lags of the squared correlation of the differences of independent counts.
 _CORRELATION = float(np.sum(np.correlate(FILTER, FILTER, "full") ** 2)) / _SQUARES**2
 SMOOTHING = 7
+SURROUNDINGS, FEATURE_REACH = 15, 7
+FEATURE_SIGMA, FEATURE_SHARE = 6.0, 0.3
+"""A feature stands out by so many standard deviations, and by this share of its surroundings."""
 LEAST_MEAN = 2.0
 """Counts; where fewer are expected, scatter says little and its law is skew."""
 LEAST_DIFFERENCES = 20
@@ -127,6 +130,33 @@ def measure_scatter(
         float(np.sum(difference**2 / largest)),
         float(2.0 * _CORRELATION * difference.size + np.sum(1.0 / middle)),
     )
+
+
+def steep_features(counts: IntArray) -> NDArray[np.bool_]:
+    """Mark peaks and steps: where a short mean leaves the median of its surroundings.
+
+    Parameters
+    ----------
+    counts : ndarray of int, shape (n,)
+        Recorded counts.
+
+    Returns
+    -------
+    ndarray of bool, shape (n,)
+        True at features and next to them.
+    """
+    if counts.size < SURROUNDINGS:
+        return np.zeros(counts.size, dtype=bool)
+    values = counts.astype(float)
+    half = SURROUNDINGS // 2
+    padded = np.pad(values, half, mode="reflect")
+    median = np.median(np.lib.stride_tricks.sliding_window_view(padded, SURROUNDINGS), axis=1)
+    short = np.convolve(values, np.full(3, 1.0 / 3.0), mode="same")
+    short[0], short[-1] = values[0], values[-1]
+    away = np.abs(short - median) > FEATURE_SIGMA * np.sqrt((median + 1.0) / 3.0)
+    # Between a slope and its flat neighbourhood the median lags: only steep places are features.
+    away &= np.abs(short - median) > FEATURE_SHARE * (median + 1.0)
+    return np.convolve(away.astype(float), np.ones(FEATURE_REACH), mode="same") > 0.5
 
 
 def last_digit_probability(counts: Sequence[IntArray]) -> tuple[float, float, int]:

@@ -47,8 +47,9 @@ FloatArray = NDArray[np.float64]
 
 LEAST_FIT_PROBABILITY = 0.01
 LEAST_ODDS = 10.0
-LEAST_SHARE = 3e-3
-"""A slip is listed if it is at least this probable beside the best one."""
+LEAST_PAIR_ODDS, CLEAR_ODDS = 30.0, 1e4
+LEAST_SHARE, LEAST_PAIR_SHARE = 3e-3, 1e-1
+"""A slip (a pair of them) is listed if it is at least this probable beside the best one."""
 SINGLES_SHARE, PAIRS_SHARE, ANYTHING_SHARE = 0.85, 0.1, 0.05
 AGREEMENT_PROBABILITY = 0.05
 
@@ -150,12 +151,15 @@ def explain(
     anything = weigh(alignment, RIGHT, none, ANYTHING).log_mean[0] + math.log(ANYTHING_SHARE)
     bar = max(right + math.log(LEAST_ODDS), anything)
     slips = [slip for slip in catalogue(alignment, unit) if slip.code not in skipped]
-    for candidates, grid in ((_singles(slips), ordinary), (_pairs(slips), COARSE)):
-        tried = STATED_ONLY if against_itself else grid
-        named = _name(alignment, candidates, tried, bar, right)
-        if named:
-            return Explanation(True, False, covered, named)
-    return Explanation(True, False, covered)
+    singles = _singles(slips)
+    named, best = _name(alignment, singles, STATED_ONLY if against_itself else ordinary, bar, right)
+    if against_itself or best > anything + math.log(CLEAR_ODDS):
+        return Explanation(True, False, covered, named)
+    # There are thousands of pairs, and one of them gives almost any number: they must explain
+    # the claim much better than a single slip, and than a mistake that could lead anywhere.
+    pair_bar = max(bar, anything + math.log(LEAST_PAIR_ODDS), best + math.log(LEAST_PAIR_ODDS))
+    pairs, _ = _name(alignment, _pairs(slips), COARSE, pair_bar, right)
+    return Explanation(True, False, covered, pairs or named)
 
 
 def _h_agrees(alignment: Alignment) -> bool:
@@ -206,12 +210,12 @@ def _name(
     grid: Sequence[Scatter],
     bar: float,
     right: float,
-) -> tuple[NamedSlip, ...]:
-    """Name the slips that pass the rule, grouped by code."""
+) -> tuple[tuple[NamedSlip, ...], float]:
+    """Name the slips that pass the rule, grouped by code; return the best log weight too."""
     log_weight, probability, planck = _weigh_all(alignment, candidates, grid)
     fitting = np.flatnonzero((probability >= LEAST_FIT_PROBABILITY) & np.isfinite(log_weight))
     if fitting.size == 0 or logsumexp(log_weight[fitting]) < bar:
-        return ()
+        return (), -math.inf
     by_codes: dict[tuple[str, ...], list[int]] = {}
     for index in fitting:
         by_codes.setdefault(candidates[index].codes, []).append(int(index))
@@ -219,14 +223,15 @@ def _name(
     best = max(sums.values())
     named = []
     for codes in sorted(sums, key=lambda key: (-sums[key], key)):
-        if sums[codes] < best + math.log(LEAST_SHARE) or sums[codes] < right:
+        share = LEAST_SHARE if len(codes) == 1 else LEAST_PAIR_SHARE
+        if sums[codes] < best + math.log(share) or sums[codes] < right:
             continue
         top = max(by_codes[codes], key=lambda index: float(log_weight[index]))
         named.append(
             _named(codes, candidates[top].variant.note, float(planck[top]),
                    float(probability[top]), sums[codes] - right)
         )  # fmt: skip
-    return tuple(named)
+    return tuple(named), best
 
 
 def _weigh_all(

@@ -1,4 +1,4 @@
-"""The page that goes back to a group: what the data say, what was claimed, what would explain it."""
+"""The page that goes back to a group: its data, its claim, and what would explain it."""
 
 from __future__ import annotations
 

@@ -38,6 +38,8 @@ from hdetermine.records.apparatus import Crystal
 from hdetermine.records.results import Determination
 from hdetermine.records.run import Run
 
+UNKNOWN_FWHM_DEG = 0.5
+"""Resolution assumed for the screening of counts that gave no h."""
 NEGLECTED_DEG = 0.02
 """A zero offset below this is not worth a line on the page."""
 
@@ -77,16 +79,21 @@ def check_group(task: GroupTask) -> GroupFinding:
         determination = determine(run, task.seed, posterior=False, monte_carlo=False)
     except InputError as error:
         finding = _without_reanalysis(group, str(error), run.apparatus.crystal)
+        zero = run.apparatus.goniometer.zero_deg
         return replace(
             finding,
-            looks=tuple(screen_counts(run, (), 0.0)),
+            looks=tuple(
+                screen_counts(run, zero.value, zero.standard_uncertainty, UNKNOWN_FWHM_DEG)
+            ),
             remarks=tuple(screen_scans(run, ())),
             traces=traces,
             simulated=bool(run.truth),
         )
     evidence = gather_evidence(determination)
     scale = determination.angle_scale
-    looks = screen_counts(run, [line.reading_deg for line in scale.lines], scale.resolution.value)
+    looks = screen_counts(
+        run, scale.zero.value, scale.zero.standard_uncertainty, scale.resolution.value
+    )
     looks += screen_voltages(determination)
     return GroupFinding(
         name=group.name,

@@ -23,7 +23,7 @@ LINE_POINTS = (4, 6, 8)
 """Rising points through which a straight line is laid."""
 SMOOTHING_POINTS = (1, 3, 5, 9)
 """Points over which a curve is smoothed, by eye, before its maximum is read."""
-HUMP_REACH = 2.6
+HUMP_REACH = 4.0
 """The maximum of the continuum is sought up to this multiple of the cutoff angle."""
 
 

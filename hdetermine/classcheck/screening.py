@@ -16,8 +16,12 @@ from hdetermine.classcheck.countscatter import (
     common_divisor,
     last_digit_probability,
     measure_scatter,
+    steep_features,
 )
+from hdetermine.classcheck.evidence import effective_spacing_pm
 from hdetermine.classcheck.screens import Family, Look, Remark
+from hdetermine.physics.bragg import glancing_angle_deg
+from hdetermine.physics.lines import K_EDGE_pm, line_groups
 from hdetermine.records.results import Cutoff, Determination
 from hdetermine.records.run import Run
 from hdetermine.records.scan import Scan
@@ -30,7 +34,8 @@ LEAST_POINTS_BELOW = 5
 GAP_STEPS = 1.5
 LEAST_VOLTAGE_DEVIATION = 0.015
 LEAST_VOLTAGES = 4
-LINE_WIDTHS = 2.5
+LINE_WIDTHS, LINE_ZERO_U = 2.5, 3.0
+ORDERS = (1, 2, 3)
 
 
 def scan_label(scan: Scan | Cutoff, number: int) -> str:
@@ -38,15 +43,18 @@ def scan_label(scan: Scan | Cutoff, number: int) -> str:
     return f"scan {number} ({scan.tube_voltage_kV:g} kV)"
 
 
-def screen_counts(run: Run, lines_deg: Sequence[float], fwhm_deg: float) -> list[Look]:
+def screen_counts(run: Run, zero_deg: float, zero_u_deg: float, fwhm_deg: float) -> list[Look]:
     """Look at the scatter of the counts, scan by scan and all together, and at last digits.
+
+    Nothing is said of scatter where lines and absorption edges are foreseen, nor where the
+    spectrum has a feature that nobody foresees.
 
     Parameters
     ----------
     run : Run
         The group's run.
-    lines_deg : sequence of float
-        Readings of the lines: no statement about scatter is made near them.
+    zero_deg, zero_u_deg : float
+        Zero of the goniometer and its standard uncertainty.
     fwhm_deg : float
         Resolution.
 
@@ -55,13 +63,14 @@ def screen_counts(run: Run, lines_deg: Sequence[float], fwhm_deg: float) -> list
     list of Look
     """
     dead_time_s = run.apparatus.counter.dead_time_us.value * 1e-6
+    foreseen = _foreseen_features(run) + zero_deg
+    margin = LINE_WIDTHS * fwhm_deg + LINE_ZERO_U * zero_u_deg
     total = Scatter()
     looks = []
     for number, scan in enumerate(run.scans, 1):
-        usable = np.ones(scan.counts.size, dtype=bool)
-        for line in lines_deg:
-            usable &= np.abs(scan.reading_deg - line) > LINE_WIDTHS * fwhm_deg
-        usable &= ~_dropouts(scan)
+        distance = np.abs(scan.reading_deg[:, np.newaxis] - foreseen)
+        usable = np.all(distance > margin, axis=1) & ~_dropouts(scan)
+        usable &= ~steep_features(scan.counts)
         scatter = measure_scatter(
             scan.counts, scan.dwell_s, dead_time_s, usable, scan.rate_rounding or 0.0
         )
@@ -81,6 +90,18 @@ def screen_counts(run: Run, lines_deg: Sequence[float], fwhm_deg: float) -> list
                      "freedom", probability, True, sentence)
             )  # fmt: skip
     return looks
+
+
+def _foreseen_features(run: Run) -> FloatArray:
+    """True angles of the anode's lines, and of absorption edges, in the first three orders."""
+    apparatus = run.apparatus
+    wavelengths = [group.wavelength_pm for group in line_groups(apparatus.tube.anode)]
+    elements = (*apparatus.crystal.elements, apparatus.tube.filter, apparatus.tube.anode)
+    wavelengths += [K_EDGE_pm[element] for element in elements if element in K_EDGE_pm]
+    spacing = effective_spacing_pm(apparatus.crystal)
+    angles = [glancing_angle_deg(np.array(wavelengths), spacing, 0.0, n) for n in ORDERS]
+    found = np.concatenate(angles) if wavelengths else np.empty(0)
+    return found[np.isfinite(found)]
 
 
 def _scatter_looks(family: Family, where: str, scatter: Scatter) -> list[Look]:

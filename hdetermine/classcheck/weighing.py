@@ -21,6 +21,8 @@ from hdetermine.classcheck.arithmetic import PROPER, Combination, Prediction, Va
 
 FloatArray = NDArray[np.float64]
 
+LARGEST_LOG = 700.0
+"""Beyond the exponential of this no float reaches."""
 LARGEST_STEP = 0.3
 """Logarithmic distance over which a linearisation is moved."""
 ZERO_READING_U_deg = 0.01
@@ -179,7 +181,7 @@ def _one(
     log_likelihood = -0.5 * (chi2 + log_det[:, np.newaxis] + m * np.log(2.0 * np.pi))
     with_h = alignment.rows.with_h
     log_h = prediction.log_values[-1] + shifts[:, -1] if with_h else np.full(len(shifts), np.nan)
-    h = np.broadcast_to(np.exp(log_h), log_likelihood.shape)
+    h = np.broadcast_to(np.exp(np.minimum(log_h, LARGEST_LOG)), log_likelihood.shape)
     return log_likelihood, chdtrc(m, chi2), h
 
 

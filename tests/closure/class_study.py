@@ -30,6 +30,7 @@ from .slipmaking import SLIPS, honest
 from .students import Bench, Work, claim_text, make_bench
 
 KINDS = (("Cu", "LiF"), ("Cu", "NaCl"), ("Mo", "LiF"))
+LARGEST_ZERO_U_DEG = 0.05
 
 
 @dataclass(frozen=True)
@@ -59,8 +60,15 @@ class Answer:
 
 
 def make_cases(number: int, seed: int) -> Iterator[Case]:
-    """Simulate and re-analyse benches; some with a supply offset, some with a large zero."""
-    for index in range(number + 1):
+    """Simulate and re-analyse benches; some with a supply offset, all with a zero offset.
+
+    A bench whose re-analysis does not find the zero from the lines is left out: without it
+    nothing can be said of slips of a few percent.
+    """
+    found = 0
+    for index in itertools.count():
+        if found == number:
+            return
         if index == 4:
             continue
         anode, crystal = KINDS[index % len(KINDS)]
@@ -72,7 +80,10 @@ def make_cases(number: int, seed: int) -> Iterator[Case]:
             long_scans=index % 2 == 0,
         )  # fmt: skip
         determination = determine(bench.run, 1, posterior=False, monte_carlo=False)
-        yield Case(bench, gather_evidence(determination))
+        evidence = gather_evidence(determination)
+        if evidence.zero_u_deg < LARGEST_ZERO_U_DEG:
+            found += 1
+            yield Case(bench, evidence)
 
 
 def read_work(work: Work, folder: Path) -> Claim:

@@ -82,6 +82,7 @@ def make_bench(
                 "gain": {"value": 1.0, "u": 0.003},
                 "offset_kV": {"value": offset_kV, "half_width": 0.05},
                 "repeatability_kV": {"value": 0.0, "u": 0.02},
+                "ripple": {"value": 0.0, "half_width": 0.002},
             },
         },
         "crystal": {
