@@ -194,14 +194,13 @@ def main() -> int:
         for trial in range(options.trials):
             number = SIGNALS[trial % len(SIGNALS)]
             writing = trial // len(SIGNALS) % 3 == 2
-            span = (campaign.duration, 0.05 * campaign.duration, 0.03)[trial // len(SIGNALS) % 3]
+            span = (campaign.duration, 0.05 * campaign.duration, 0.1)[trial // len(SIGNALS) % 3]
             delay = chance.uniform(0.0, span) + (0.0 if writing else START_s)
             outcome, wrong = campaign.trial(number, delay, writing)
             outcomes[f"{number.name}: {outcome}"] += 1
             faults += bool(wrong)
-            print(
-                f"{trial + 1:4d} {number.name:8s} {delay:6.3f} s {'of writing' if writing else '':10s}  {outcome}  {'; '.join(wrong)}"
-            )
+            when = f"{delay:6.3f} s{' of writing' if writing else ''}"
+            print(f"{trial + 1:4d} {number.name:8s}{when:20s} {outcome}  {'; '.join(wrong)}")
     for outcome, count in sorted(outcomes.items()):
         print(f"{count:4d} x {outcome}")
     print(f"{options.trials} trials, {faults} with a fault")
