@@ -9,6 +9,7 @@ import sys
 import pytest
 
 from hdetermine import __version__
+from hdetermine.files.shipped import shipped_folder
 
 MODULE = [sys.executable, "-m", "hdetermine"]
 
@@ -44,6 +45,19 @@ def test_bad_input_is_one_sentence_and_status_two(arguments, words):
     assert refused.stderr.startswith("hdetermine: ")
     assert words in refused.stderr
     assert refused.stderr.count("\n") == 1
+
+
+@pytest.mark.parametrize("command", ["analyse", "check"])
+def test_an_output_folder_that_is_a_file_is_told_before_the_work(command, tmp_path):
+    source = shipped_folder("demo_runs")
+    if command == "analyse":
+        source = source / "molybdenum_rocksalt"
+    (tmp_path / "out").write_text("mine")
+    refused = run(command, str(source), "-o", str(tmp_path / "out"), timeout=20)
+    assert refused.returncode == 2
+    assert "is not a folder" in refused.stderr
+    assert "analysing" not in refused.stderr
+    assert (tmp_path / "out").read_text() == "mine"
 
 
 def test_a_closed_pipe_is_no_traceback():

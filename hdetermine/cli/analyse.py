@@ -59,6 +59,8 @@ def command(
 
     find_templates(templates)  # a wrong folder is told before the work, not after it
     run = read_run(run_folder)
+    target = out if out is not None else run_folder / "result"
+    write_outputs(target, {})  # so is a folder that cannot be written to
     with working("analysing") as progress:
         result = determine(
             run, seed, posterior=not linear_only, monte_carlo=not linear_only, progress=progress
@@ -78,7 +80,6 @@ def command(
         for done, (name, make) in enumerate(makers.items()):
             progress("reports", done, len(makers))
             outputs[name] = make()
-        target = out if out is not None else run_folder / "result"
         write_outputs(target, outputs)
     if not quiet:
         click.echo("\n".join(summary_lines(result)))

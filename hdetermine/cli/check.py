@@ -56,6 +56,8 @@ def command(
 
     found_templates = find_templates(templates)
     target = out if out is not None else class_folder / DEFAULT_OUT
+    if class_folder.is_dir():
+        write_outputs(target, {})  # a folder that cannot be written to is told before the work
     with working("checking") as progress:
         finding = check_class(
             class_folder,
