@@ -1,6 +1,7 @@
 """Expected counts around an edge: their values, derivatives, maximum and its two sides."""
 
 import math
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -59,7 +60,7 @@ def by_the_book(readings, p, surroundings):
         rates.append(
             sum(
                 quad(integrand, low, high, args=(centre,), epsabs=1e-9)[0]
-                for low, high in zip(ends, ends[1:], strict=False)
+                for low, high in pairwise(ends)
             )
         )
     return np.array(rates)

@@ -1,6 +1,7 @@
 """The smearing kernel and its quadrature, against adaptive integration."""
 
 import math
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -38,7 +39,7 @@ def smeared(spectrum, limit, mix):
     ends = [limit, *(b for b in breaks if b > limit), max(CENTRE + 8.0 * SIGMA, limit)]
     return sum(
         quad(lambda a: spectrum(a, limit) * density(a - CENTRE, mix), low, high, epsabs=1e-12)[0]
-        for low, high in zip(ends, ends[1:], strict=False)
+        for low, high in pairwise(ends)
     )
 
 
