@@ -15,6 +15,7 @@ from hdetermine.budget.suppose import counting_floor, improvements
 from hdetermine.errors import InputError
 from hdetermine.inference.anglescale import angle_scale
 from hdetermine.inference.cutoffs import find_cutoffs
+from hdetermine.inference.gathering import gathered
 from hdetermine.inference.montecarlo import monte_carlo_route
 from hdetermine.inference.posterior import posterior_route
 from hdetermine.inference.relation import build_model, relate
@@ -69,9 +70,10 @@ def determine(
     """
     report = progress or (lambda _stage, _done, _total: None)
     report("lines", 0, 1)
-    scale = angle_scale(run)
+    seen = gathered(run)
+    scale = angle_scale(seen)
     report("lines", 1, 1)
-    scale, shared, cutoffs = find_cutoffs(run, scale, report)
+    scale, shared, cutoffs = find_cutoffs(seen, scale, report)
     if shared is None or not any(cutoff.used for cutoff in cutoffs):
         raise InputError(_nothing_usable(cutoffs))
     model = build_model(run.apparatus, scale, shared, cutoffs)

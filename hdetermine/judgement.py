@@ -154,8 +154,7 @@ def _zero(apparatus: Apparatus, scale: AngleScale) -> Check:
         "zero offset of the lines against the run sheet",
         figure,
         "The lines stand where the stated zero offset lets them be expected.",
-        "The lines want another zero offset than the run sheet states; that of the lines was "
-        "used.",
+        "The lines want another zero offset than the run sheet states; that of the lines was used.",
         "No line was found, so the zero offset is the stated one.",
     )
 

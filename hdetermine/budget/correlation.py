@@ -63,7 +63,9 @@ def checked_correlation(
         raise InputError(f"A correlation is beyond one{pair}; it must lie between -1 and 1.")
     matrix = np.asarray(np.clip(0.5 * (matrix + matrix.T), -1.0, 1.0))
     np.fill_diagonal(matrix, 1.0)
-    if size and np.linalg.eigvalsh(matrix)[0] < -_TOLERANCE * size:
+    joined = np.flatnonzero(np.count_nonzero(matrix, axis=1) > 1)
+    inner = matrix[np.ix_(joined, joined)]
+    if joined.size and np.linalg.eigvalsh(inner)[0] < -_TOLERANCE * size:
         raise InputError(
             "The correlation matrix is not positive semi-definite, so no quantities can have it; "
             "check the correlations against each other."

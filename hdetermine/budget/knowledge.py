@@ -43,7 +43,8 @@ def with_uncertainties(model: MeasurementModel, wanted: Mapping[str, float]) -> 
         if target is None:
             continue
         variance = covariance[i, i]
-        if original[i] == 0.0:
+        alone = np.count_nonzero(covariance[:, i]) <= 1
+        if original[i] == 0.0 or (alone and variance > 0.0):
             covariance[i, i] = target**2
         elif target**2 > original[i] or variance > target**2:
             column = covariance[:, i].copy()

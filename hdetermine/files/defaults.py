@@ -94,7 +94,8 @@ RIPPLE = InputRule(
     "(peak - displayed)/displayed, a ratio and not percent",
     0.0,
     half_width=0.015,
-    reason=f"a supply that does not state it may peak a percent or two off its display ({_PRACTICE})",
+    reason="a supply that does not state it may peak a percent or two off its display "
+    f"({_PRACTICE})",
 )
 WORK_FUNCTION = InputRule(
     "tube.cathode_work_function_eV",

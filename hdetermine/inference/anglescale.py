@@ -151,9 +151,7 @@ def _wavelength_u(used: tuple[FittedLine, ...], weight: FloatArray) -> float:
     return math.hypot(float(np.average(relative, weights=weight)), BLEND_U)
 
 
-def _resolution(
-    apparatus: Apparatus, used: tuple[FittedLine, ...]
-) -> tuple[Quantity, Quantity]:
+def _resolution(apparatus: Apparatus, used: tuple[FittedLine, ...]) -> tuple[Quantity, Quantity]:
     width = np.array([line.fwhm_deg for line in used])
     weight = np.array([line.fwhm_u_deg for line in used]) ** -2.0
     mean = float(np.average(width, weights=weight))
@@ -218,6 +216,9 @@ def _without_lines(
         lines=lines,
         zero_from="run sheet",
         resolution_from="run sheet" if stated else "edges",
-        remarks=(*remarks, "no characteristic line was found in the scans: the zero offset is "
-                 "the one stated in the run sheet."),
+        remarks=(
+            *remarks,
+            "no characteristic line was found in the scans: the zero offset is "
+            "the one stated in the run sheet.",
+        ),
     )

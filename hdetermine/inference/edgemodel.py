@@ -82,9 +82,7 @@ class Surroundings:
         kernel = replace(
             self.kernel,
             fwhm_deg=changes.pop("resolution_deg", self.kernel.fwhm_deg),
-            triangular_fraction=changes.pop(
-                "triangular_fraction", self.kernel.triangular_fraction
-            ),
+            triangular_fraction=changes.pop("triangular_fraction", self.kernel.triangular_fraction),
         )
         values = {
             name: changes.get(name, getattr(self, name))
@@ -232,9 +230,7 @@ def expected_counts(
         ahead = _line_rate(window.reading_deg, template, shift + step, given)
         behind = _line_rate(window.reading_deg, template, shift - step, given)
         rate = rate + amplitude * profile
-        columns.append(
-            amplitude * np.stack([profile, (ahead - behind) / (2.0 * step)], axis=1)
-        )
+        columns.append(amplitude * np.stack([profile, (ahead - behind) / (2.0 * step)], axis=1))
     dead_time_s = given.dead_time_us * 1e-6
     expected = window.dwell_s * recorded_rate(rate, dead_time_s, given.dead_time_model)
     slope = window.dwell_s * recorded_slope(rate, dead_time_s, given.dead_time_model)

@@ -20,8 +20,8 @@ from hdetermine.inference.line import StraightLine, fit_straight_line
 from hdetermine.inference.scatter import least_chi2, log_covariance_of
 from hdetermine.inference.shared import SharedTerms
 from hdetermine.inference.weights import (
-    gls_weights,
     input_covariance,
+    least_variance_weights,
     log_sensitivities,
     single_planck_J_s,
     with_gls_weights,
@@ -180,7 +180,7 @@ def relate(model: MeasurementModel, scatter: float, repeat: float | None) -> Rel
         degrees_of_freedom=n - 1,
         birge_ratio=math.sqrt(chi2 / (n - 1)) if n > 1 else math.nan,
         scatter_deg=scatter,
-        influence=_influence(model, planck, planck * slope_u / slope),
+        influence=_influence(model, log_covariance, planck, planck * slope_u / slope),
         repeat_u_relative=repeat,
     )
 
@@ -216,14 +216,18 @@ def _free_lines(
     return free, power
 
 
-def _influence(model: MeasurementModel, planck: float, u: float) -> tuple[Influence, ...]:
-    """Leave each voltage out in turn."""
+def _influence(
+    model: MeasurementModel, covariance: FloatArray, planck: float, u: float
+) -> tuple[Influence, ...]:
+    """Leave each voltage out in turn; `covariance` is that of ln h_i."""
     if len(model.scans) < 2:
         return ()
+    single = single_planck_J_s(model)
     found = []
     for i, scan in enumerate(model.scans):
-        rest = without(model, i)
-        value = float(gls_weights(rest) @ single_planck_J_s(rest))
+        keep = np.arange(len(model.scans)) != i
+        weights = least_variance_weights(covariance[np.ix_(keep, keep)])
+        value = float(weights @ single[keep])
         found.append(
             Influence(
                 scan=scan,
@@ -234,23 +238,3 @@ def _influence(model: MeasurementModel, planck: float, u: float) -> tuple[Influe
             )
         )
     return tuple(found)
-
-
-def without(model: MeasurementModel, row: int) -> MeasurementModel:
-    """Return the model without one scan and its own inputs; the weights are left to the caller."""
-    keep = np.arange(len(model.scans)) != row
-    prefix = f"scan.{model.scans[row]}."
-    columns = np.array(
-        [quantity.common or not quantity.name.startswith(prefix) for quantity in model.inputs]
-    )
-    return replace(
-        model,
-        scans=tuple(scan for scan, kept in zip(model.scans, keep, strict=True) if kept),
-        displayed_kV=model.displayed_kV[keep],
-        reading_deg=model.reading_deg[keep],
-        inputs=tuple(q for q, kept in zip(model.inputs, columns, strict=True) if kept),
-        correlation=model.correlation[np.ix_(columns, columns)],
-        responses_deg=model.responses_deg[np.ix_(keep, columns)],
-        weights=np.full(int(keep.sum()), 1.0 / int(keep.sum())),
-        skew=model.skew[keep],
-    )

@@ -23,6 +23,7 @@ from hdetermine.records.results import MeasurementModel
 FloatArray = NDArray[np.float64]
 
 _ITERATIONS = 20
+_SETTLED = 1e-8
 _RESOLVED = 1e-13
 
 
@@ -159,7 +160,7 @@ def gls_weights(model: MeasurementModel) -> FloatArray:
         if not np.all(np.isfinite(fitted)):
             break
         reading = fitted
-        if np.max(np.abs(weights - previous)) < 1e-10:
+        if np.max(np.abs(weights - previous)) < _SETTLED:
             break
     return weights
 

@@ -97,9 +97,21 @@ LINES: tuple[Line, ...] = (
 
 # Wavelengths, not energies: turning one into the other takes h, and h is what is sought.
 K_EDGE_pm: dict[str, float] = {
-    "Ca": 307.044, "Ti": 249.666, "Cr": 207.020, "Fe": 174.331, "Co": 160.830,
-    "Ni": 148.787, "Cu": 138.082, "Zn": 128.361, "Ge": 111.667, "Br": 92.017,
-    "Zr": 68.888, "Nb": 65.303, "Mo": 61.992, "Rh": 53.395, "Pd": 50.918,
+    "Ca": 307.044,
+    "Ti": 249.666,
+    "Cr": 207.020,
+    "Fe": 174.331,
+    "Co": 160.830,
+    "Ni": 148.787,
+    "Cu": 138.082,
+    "Zn": 128.361,
+    "Ge": 111.667,
+    "Br": 92.017,
+    "Zr": 68.888,
+    "Nb": 65.303,
+    "Mo": 61.992,
+    "Rh": 53.395,
+    "Pd": 50.918,
     "Ag": 48.595,
 }
 """K absorption edges, pm (xraydb 4.5.8, after Elam, Ravel and Sieber 2002; good to 0.02 %)."""
