@@ -7,6 +7,7 @@ import os
 import shutil
 import subprocess
 import sys
+from pathlib import Path
 
 import pytest
 
@@ -92,3 +93,32 @@ def test_the_same_from_python(run_folder, first):
 
     result = hdetermine.determine(hdetermine.read_run(run_folder), seed=1)
     assert result_json(result) == first[0]["result.json"]
+
+
+@pytest.mark.slow
+def test_a_class_is_the_same_with_any_number_of_processes(run_folder, tmp_path):
+    for number, which in enumerate(("one", "other")):
+        top = tmp_path / which / "class"
+        for group in ("alpha", "beta"):
+            shutil.copytree(run_folder, top / group)
+        (top / "claims.csv").write_text("group,h [J s],u\nalpha,6.55e-34,0.04e-34\n", "utf-8")
+        command = [sys.executable, "-m", "hdetermine", "check", "class", "-o", "out"]
+        done = subprocess.run(
+            [*command, "--jobs", str(number + 1), "--pdf"],
+            cwd=top.parent,
+            env=surroundings(number),
+            capture_output=True,
+            text=True,
+        )
+        assert done.returncode == 0, done.stderr
+    one, other = (
+        {
+            path.relative_to(tmp_path / which): path.read_bytes()
+            for path in sorted((tmp_path / which / "out").rglob("*"))
+            if path.is_file()
+        }
+        for which in ("one", "other")
+    )
+    assert len(one) >= 8
+    for path, content in one.items():
+        assert other[Path("other") / path.relative_to("one")] == content, path
