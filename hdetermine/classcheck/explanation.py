@@ -47,7 +47,7 @@ FloatArray = NDArray[np.float64]
 
 LEAST_FIT_PROBABILITY = 0.01
 LEAST_ODDS = 10.0
-LEAST_PAIR_ODDS, CLEAR_ODDS = 30.0, 1e4
+LEAST_PAIR_ODDS, CLEAR_ODDS = 5.0, 1e4
 LEAST_SHARE, LEAST_PAIR_SHARE = 3e-3, 1e-1
 """A slip (a pair of them) is listed if it is at least this probable beside the best one."""
 SINGLES_SHARE, PAIRS_SHARE, ANYTHING_SHARE = 0.85, 0.1, 0.05

@@ -23,8 +23,7 @@ from hdetermine.report.table import (
     words,
 )
 
-SURELY_FITS = 1e4
-"""Odds from which "would produce" stands without a figure."""
+EQUALS = "\N{NO-BREAK SPACE}=\N{NO-BREAK SPACE}"
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,7 +84,9 @@ def feedback_of(row: GroupRow) -> Feedback:
         faults=tuple(faults),
         tables=tuple(one for one in tables if one is not None),
         uncertainty="" if found.planck is None else found.planck.uncertainty_sentence,
-        slips=tuple(_slip_text(slip) for slip in found.slips),
+        slips=tuple(
+            _slip_text(slip, bool(found.claim and found.claim.cutoffs)) for slip in found.slips
+        ),
         slip_lead=_slip_lead(found),
         simulated=found.simulated,
     )
@@ -96,22 +97,22 @@ def _summary(found: GroupFinding) -> str:
     reanalysis, planck = found.reanalysis, found.planck
     if reanalysis is not None:
         inside = "agrees with" if abs(reanalysis.E_n) <= 1.0 else "does not agree with"
+        found_h = _planck(reanalysis.planck_J_s, reanalysis.expanded_uncertainty_J_s)
         scans = "scan" if reanalysis.scans == 1 else "scans"
         parts.append(
             f"From {reanalysis.used} of {reanalysis.scans} {scans} the re-analysis finds "
-            f"h = {_planck(reanalysis.planck_J_s, reanalysis.expanded_uncertainty_J_s)}, which "
-            f"{inside} the SI value within its expanded uncertainty."
+            f"h{EQUALS}{found_h}, which {inside} the SI value within its expanded uncertainty."
         )
     if planck is not None and reanalysis is not None:
         claimed = _planck(planck.claimed_J_s, planck.claimed_u_J_s)
         parts.append(
-            f"The claim is h = {claimed}: {_distance(planck.relative_difference)} what follows "
-            "from the same data."
+            f"The claim is h{EQUALS}{claimed}: {_distance(planck.relative_difference)} what "
+            "follows from the same data."
         )
     elif planck is not None:
         claimed = _planck(planck.claimed_J_s, planck.claimed_u_J_s)
         parts.append(
-            f"The claim is h = {claimed}: {_distance(planck.relative_deviation)} the SI value."
+            f"The claim is h{EQUALS}{claimed}: {_distance(planck.relative_deviation)} the SI value."
         )
     parts.append(_VERDICT_SENTENCES.get(found.verdict, ""))
     return " ".join(part for part in parts if part)
@@ -204,7 +205,7 @@ def _cutoffs(found: GroupFinding) -> Table | None:
         row += [_ratio(line.relative_difference)] if with_angle or with_length else []
         rows.append(row)
     return table(
-        "cutoffs", "Cutoffs", headings, rows, numeric=range(len(headings)),
+        "cutoffs", "Cutoffs", headings, rows, numeric=range(1, len(headings)),
         note="Angles are glancing angles, corrected for the goniometer's zero. The uncertainty is "
         "that of each cutoff alone, without what moves all of them together.",
     )  # fmt: skip
@@ -244,7 +245,9 @@ def _screening(found: GroupFinding) -> Table | None:
 def _figures(remark: Remark) -> str:
     parts = []
     if remark.statistic is not None and remark.figure:
-        parts.append(f"{remark.figure}: {digits(remark.statistic, 3).text}")
+        number = remark.statistic
+        text = f"{number:.0f}" if number.is_integer() else digits(number, 3).text
+        parts.append(f"{remark.figure}: {text}")
     if remark.threshold:
         parts.append(f"bar: {remark.threshold}")
     if remark.class_chance is not None:
@@ -265,10 +268,12 @@ def _slip_lead(found: GroupFinding) -> str:
     )
 
 
-def _slip_text(slip: NamedSlip) -> SlipText:
+def _slip_text(slip: NamedSlip, with_cutoffs: bool) -> SlipText:
     prediction = ""
     if math.isfinite(slip.predicted_J_s):
-        prediction = f"From the group's own data it gives h = {_planck(slip.predicted_J_s, 0.0)}."
+        source = "With the claimed cutoffs" if with_cutoffs else "From the group's own data"
+        value = _planck(slip.predicted_J_s, 0.0)
+        prediction = f"{source} it gives h{EQUALS}{value}."
     return SlipText(
         title=slip.title[:1].upper() + slip.title[1:],
         sentence=slip.sentence,

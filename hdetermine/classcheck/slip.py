@@ -58,7 +58,8 @@ class NamedSlip:
     note : str
         The variant that fits best.
     predicted_J_s : float
-        h that it predicts from the group's own data; nan if h is not part of it.
+        h that it predicts from the claimed cutoffs, or else from the group's own data; nan if h
+        is not part of it.
     fit_probability : float
         Chance of a worse agreement if it is so (from chi squared).
     odds : float

@@ -179,9 +179,12 @@ def _one(
     m = residual.shape[1]
     log_det = 2.0 * np.sum(np.log(np.diagonal(lower, axis1=1, axis2=2)), axis=1)
     log_likelihood = -0.5 * (chi2 + log_det[:, np.newaxis] + m * np.log(2.0 * np.pi))
-    with_h = alignment.rows.with_h
-    log_h = prediction.log_values[-1] + shifts[:, -1] if with_h else np.full(len(shifts), np.nan)
-    h = np.broadcast_to(np.exp(np.minimum(log_h, LARGEST_LOG)), log_likelihood.shape)
+    # h as it follows from the claimed cutoffs, where there are any.
+    log_h = np.full(log_likelihood.shape, np.nan)
+    if alignment.rows.with_h:
+        foreseen = prediction.log_values[-1] + shifts[:, -1]
+        log_h = foreseen + np.einsum("gi,gif->gf", lower[:, -1, :-1], white[:, :-1])
+    h = np.exp(np.minimum(log_h, LARGEST_LOG))
     return log_likelihood, chdtrc(m, chi2), h
 
 

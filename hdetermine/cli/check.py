@@ -24,7 +24,7 @@ DEFAULT_OUT = "class_check"
 @click.option("--anonymise", is_flag=True, help="Put codes in place of names, everywhere.")
 @click.option("--pdf", is_flag=True, help="Write each group's feedback as a PDF too.")
 @click.option("--seed", type=click.IntRange(min=0), default=1, show_default=True,
-              help="Seed of the re-analyses; with --anonymise also the key of the codes.")  # fmt: skip
+              help="Seed of the re-analyses, and key of the codes.")  # fmt: skip
 @click.option("--templates", type=click.Path(path_type=Path), metavar="DIR",
               help="A folder of your own templates.")  # fmt: skip
 @click.option("--quiet", is_flag=True, help="Print no summary.")

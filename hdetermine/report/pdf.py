@@ -80,11 +80,26 @@ def render_pdf(
         "document": document_data(document),
         "wording": wording,
     }
-    return _compiled(found.sources(), content)
+    return compile_document(found.sources(), TEMPLATE, content)
 
 
-def _compiled(sources: dict[str, bytes], content: dict[str, Any]) -> bytes:
-    """Compile with our own fonts; ask for the machine's only where ours lack a character."""
+def compile_document(sources: dict[str, bytes], template: str, content: dict[str, Any]) -> bytes:
+    """Compile with our own fonts; ask for the machine's only where ours lack a character.
+
+    Parameters
+    ----------
+    sources : dict of str to bytes
+        Every template file by name.
+    template : str
+        The one to compile; it finds `content` in ``data.json``.
+    content : dict
+        Text, numbers, lists and dicts: data, never markup.
+
+    Raises
+    ------
+    InputError
+        If a template of the laboratory's own cannot be compiled.
+    """
     strange = not _covers(_texts(content))
     attempts = ((content, False),) if not strange else (
         (content, True), (replaced(content), False))  # fmt: skip
@@ -92,7 +107,7 @@ def _compiled(sources: dict[str, bytes], content: dict[str, Any]) -> bytes:
         # From memory: no folder for a killed process to leave behind.
         # (Any: the stub of typst does not list the mapping that its documentation describes.)
         files: Any = {**sources, "data.json": json.dumps(data, ensure_ascii=True).encode("ascii")}
-        files["main.typ"] = files[TEMPLATE]
+        files["main.typ"] = files[template]
         try:
             pdf: bytes = typst.compile(
                 files,
@@ -107,7 +122,7 @@ def _compiled(sources: dict[str, bytes], content: dict[str, Any]) -> bytes:
             if number < len(attempts):
                 continue
             raise InputError(
-                f"The template {TEMPLATE} cannot be set: {error.message}; mend it or take it away."
+                f"The template {template} cannot be set: {error.message}; mend it or take it away."
             ) from error
     raise AssertionError("one attempt always answers")
 
@@ -149,7 +164,7 @@ def document_data(document: Document) -> dict[str, Any]:
             "lines": _picture(figures.lines),
             "posterior": [_picture(one) for one in figures.posterior],
         },
-        "tables": {key: _table(one) for key, one in document.tables.items()},
+        "tables": {key: table_data(one) for key, one in document.tables.items()},
         "scans": [_scan(one) for one in document.scans],
         "posterior_state": document.posterior_state,
         "scale_remarks": document.scale_remarks,
@@ -164,7 +179,8 @@ def _picture(picture: Picture | None) -> dict[str, str] | None:
     return {"svg": picture.svg, "alt": picture.alt, "caption": picture.caption}
 
 
-def _table(table: Table) -> dict[str, Any]:
+def table_data(table: Table) -> dict[str, Any]:
+    """Return a table as lists, dicts and text, for JSON."""
     return {
         "caption": table.caption,
         "columns": [

@@ -21,7 +21,7 @@ from hdetermine.files.atomic import write_outputs
 from hdetermine.planning.runfiles import run_files
 
 from .slipmaking import doubled, lattice, no_zero, straight_line, wrong_unit
-from .students import BOOK_SPACING_PM, Bench, Hook, Work, claim_text, do_work, make_bench
+from .students import Bench, Hook, Work, claim_text, do_work, make_bench
 
 SEED = 4300
 FOLDER = Path(__file__).resolve().parents[2] / "demo_runs" / "class_of_twelve"
@@ -39,6 +39,12 @@ class Member:
     hooks: tuple[tuple[str, Hook], ...] = ()
     shows: str = "wavelength"
     seed: int = 0
+
+
+def _ruler(work: Work) -> None:
+    """Lay the line, and later combine the voltages without an intercept, as usual."""
+    work.notes["ways"] = 2
+    straight_line(work)
 
 
 def _small_u(work: Work) -> None:
@@ -59,16 +65,6 @@ def _joules_then(hook: Hook) -> Hook:
     return both
 
 
-def _chloride(work: Work) -> None:
-    """Take the spacing of potassium chloride."""
-    work.notes["spacing"] = BOOK_SPACING_PM["KCl"]
-
-
-def _kilovolt(work: Work) -> None:
-    _joules(work)
-    work.h /= 1000.0
-
-
 def _stated(work: Work) -> None:
     """One and a half percent, which is fair."""
     work.standard, work.expanded = abs(work.h) * 0.015, None
@@ -85,12 +81,12 @@ MEMBERS: tuple[Member, ...] = (
            shows="both", hooks=(("angle", lattice),)),
     Member("hazel", "straight line through the rise followed down to the axis, and an "
            "uncertainty far too small", "slip", "straight_line_crossing",
-           hooks=(("reading", straight_line), ("h", _small_u))),
+           hooks=(("reading", _ruler), ("h", _small_u))),
     Member("juniper", "h in eV s labelled J s", "slip", "electronvolt_or_joule",
            hooks=(("h", _joules_then(wrong_unit)),)),
-    Member("larch", "two slips: spacing of another crystal, and kV put for V", "slip",
-           "other_crystal+power_of_ten", shows="angle",
-           hooks=(("angle", _chloride), ("h", _kilovolt))),
+    Member("larch", "two slips: 2 theta used as theta, and h in eV s labelled J s", "slip",
+           "double_angle+electronvolt_or_joule", shows="angle",
+           hooks=(("angle", doubled), ("h", _joules_then(wrong_unit)))),
     Member("maple", "clean claim, but the counts were smoothed (running mean of three)",
            "agrees", "", "scatter is not Poisson's", hooks=(("h", _stated),)),
     Member("oak", "clean claim, but 20 counts of one scan are those of alder", "agrees", "",
