@@ -27,6 +27,7 @@ FloatArray = NDArray[np.float64]
 ORDERS = (1, 2, 3)
 _REACH_WIDTHS = 2.2
 _NARROW_REACH_DEG = 0.35
+SIGNIFICANT = 8.0  # amplitude over its standard uncertainty
 _LOCAL = 6  # position, log width, kernel, and level, slope and bend of the log background
 _BACKGROUND_U = (3.0, 0.7)  # weak priors of slope and bend over half the window
 _WIDEST_DEG = 0.8
@@ -212,7 +213,10 @@ def fit_lines(
             fit = _settle_width(scan, cluster, zero_deg, dead_time_us, dead_time_model)
             if fit is not None and fit.converged:
                 fits.append((cluster, fit))
-        widest = max((_width(fit) for _, fit in fits), default=0.0)
+        # The width of a line that is hardly seen says nothing.
+        widest = max(
+            (_width(fit) for _, fit in fits if _significance(fit) > SIGNIFICANT), default=0.0
+        )
         if _REACH_WIDTHS * min(widest, _WIDEST_DEG) <= reach:
             break
         # Broad lines overlap with their neighbours: fit those together.
@@ -222,6 +226,12 @@ def fit_lines(
 
 def _width(fit: Maximum) -> float:
     return math.exp(float(np.clip(fit.parameters[1], -4.0, 1.0)))
+
+
+def _significance(fit: Maximum) -> float:
+    """Amplitude of the strongest line over its standard uncertainty."""
+    strongest = _LOCAL + int(np.argmax(fit.parameters[_LOCAL:]))
+    return 1.0 / max(math.sqrt(max(float(fit.covariance()[strongest, strongest]), 0.0)), 1e-6)
 
 
 def _settle_width(
@@ -275,9 +285,7 @@ def _fit_cluster(
     dead_time_s = dead_time_us * 1e-6
 
     def profiles(place: FloatArray) -> FloatArray:
-        kernel = Kernel(
-            math.exp(min(max(float(place[1]), -4.0), 1.0)), min(max(float(place[2]), 0.0), 1.0)
-        )
+        kernel = Kernel(math.exp(min(max(float(place[1]), -4.0), 1.0)), float(place[2]))
         return np.stack([_feature_profile(readings - place[0], f, kernel) for f in cluster])
 
     def model(parameters: FloatArray) -> tuple[FloatArray, FloatArray]:
@@ -311,7 +319,9 @@ def _fit_cluster(
         + [math.log(height * width_deg)] * len(cluster)
     )
     limits = np.array([0.5 * width_deg, 0.4, 0.3, 1.0, 1.0, 1.0] + [1.0] * len(cluster))
-    return maximise(counts, model, prior, start, limits)
+    low, high = np.full(size, -np.inf), np.full(size, np.inf)
+    low[2], high[2] = 0.0, 1.0
+    return maximise(counts, model, prior, start, limits, bounds=(low, high))
 
 
 def _harvest(scan: str, cluster: tuple[Feature, ...], fit: Maximum) -> Iterator[FittedLine]:
@@ -329,8 +339,8 @@ def _harvest(scan: str, cluster: tuple[Feature, ...], fit: Maximum) -> Iterator[
         shift_u_deg=float(u[0]) * misfit,
         fwhm_deg=width,
         fwhm_u_deg=width * float(u[1]) * misfit,
-        triangular_fraction=float(np.clip(fit.parameters[2], 0.0, 1.0)),
+        triangular_fraction=float(fit.parameters[2]),
         triangular_fraction_u=float(u[2]) * misfit,
-        significance=1.0 / max(float(u[_LOCAL + strongest]), 1e-6),
+        significance=_significance(fit),
         misfit=misfit,
     )

@@ -9,6 +9,7 @@ import numpy as np
 
 from hdetermine.errors import InputError
 from hdetermine.inference.linefit import (
+    SIGNIFICANT,
     Feature,
     FittedLine,
     covered,
@@ -22,7 +23,6 @@ from hdetermine.records.results import LineMeasure
 from hdetermine.records.run import Run
 from hdetermine.records.scan import Scan
 
-SIGNIFICANT = 8.0  # amplitude over its standard uncertainty
 REFERENCE_TOLERANCE = 3.0  # in standard uncertainties, between reference and edge scans
 FARTHEST_DEG = 0.35  # between the first look at a line and its fit
 WIDEST_DEG = 1.2

@@ -85,10 +85,10 @@ def maximise(
     W. Cash, Astrophys. J. 228, 939 (1979), for the likelihood; the expected information is
     J^T diag(1/m) J.
     """
-    free = np.ones(start.size, dtype=bool)
+    may_move = np.ones(start.size, dtype=bool)
     if hold is not None:
-        free[hold] = False
-    index = np.ix_(free, free)
+        may_move[hold] = False
+    low, high = bounds
     parameters = start.astype(float)
     expected, jacobian = model(parameters)
     penalty, gradient, precision = prior(parameters)
@@ -99,9 +99,13 @@ def maximise(
         score = weighted.T @ (counts - expected) - gradient
         information = weighted.T @ jacobian + np.diag(precision)
         scale = np.diag(information).clip(min=1e-12)
+        # A parameter that its bound stops is held, lest the others reckon with its step.
+        stopped = ((parameters <= low) & (score < 0.0)) | ((parameters >= high) & (score > 0.0))
+        free = may_move & ~stopped
+        index = np.ix_(free, free)
         step = np.zeros(parameters.size)
         step[free] = np.linalg.solve((information + damping * np.diag(scale))[index], score[free])
-        trial = np.clip(parameters + np.clip(step, -step_limits, step_limits), *bounds)
+        trial = np.clip(parameters + np.clip(step, -step_limits, step_limits), low, high)
         trial_expected, trial_jacobian = model(trial)
         trial_penalty, trial_gradient, trial_precision = prior(trial)
         trial_deviance = poisson_deviance(counts, trial_expected)
