@@ -27,6 +27,8 @@ FloatArray = NDArray[np.float64]
 ORDERS = (1, 2, 3)
 _REACH_WIDTHS = 2.2
 _NARROW_REACH_DEG = 0.35
+_LOOK_DEG = 0.9  # half window of the first look at a line
+_LEAST_LOOK = 7
 SIGNIFICANT = 8.0  # amplitude over its standard uncertainty
 _LOCAL = 6  # position, log width, kernel, and level, slope and bend of the log background
 _BACKGROUND_U = (3.0, 0.7)  # weak priors of slope and bend over half the window
@@ -124,7 +126,7 @@ def search_zero(
 ) -> tuple[float, float] | None:
     """Zero offset at which the expected pattern of lines fits a scan best.
 
-    A matched filter on the counts above a running background, in units of their noise.
+    Every feature is matched above a local parabola, and the matches add up.
 
     Returns
     -------
@@ -134,32 +136,36 @@ def search_zero(
     if scan.reading_deg.size < 15:
         return None
     rate = scan.counts / scan.dwell_s
-    base = _running_background(scan.reading_deg, rate)
-    noise = np.sqrt(np.maximum(base, 0.5 / scan.dwell_s) / scan.dwell_s)
+    variance = np.maximum(scan.counts, 1.0) / scan.dwell_s**2
     step = max(0.25 * scan.step_deg, 0.01)
     best: tuple[float, float] | None = None
     for zero in np.arange(zero_deg - reach_deg, zero_deg + reach_deg + 0.5 * step, step):
         inside = covered(scan, every, float(zero), 0.1)
-        score = 0.0
-        for feature in inside:
-            profile = _feature_profile(scan.reading_deg - zero, feature, Kernel(0.25, 0.5))
-            if not profile.any():
-                continue
-            signal = float(np.sum(profile * (rate - base)) / np.sum(profile**2))
-            error = float(np.sqrt(np.sum((profile * noise) ** 2)) / np.sum(profile**2))
-            score += max(signal / error, 0.0) if error > 0.0 else 0.0
+        score = sum(
+            _prominence(scan.reading_deg - zero, rate, variance, feature) for feature in inside
+        )
         if inside and (best is None or score > best[1]):
             best = (float(zero), score)
     return best
 
 
-def _running_background(readings: FloatArray, rate: FloatArray) -> FloatArray:
-    """Lower envelope: a running 30 % quantile over 3 degrees."""
-    base = np.empty_like(rate)
-    for i, reading in enumerate(readings):
-        near = np.abs(readings - reading) < 1.5
-        base[i] = np.quantile(rate[near], 0.3)
-    return base
+def _prominence(
+    angles: FloatArray, rate: FloatArray, variance: FloatArray, feature: Feature
+) -> float:
+    """Amplitude of a feature over a local parabola, in standard uncertainties; not negative."""
+    distance = angles - feature.angle_deg
+    near = np.abs(distance) < _LOOK_DEG
+    if int(near.sum()) < _LEAST_LOOK:
+        return 0.0
+    away = distance[near] / _LOOK_DEG
+    profile = _feature_profile(angles[near], feature, Kernel(0.25, 0.5))
+    design = np.stack([profile, np.ones_like(away), away, away**2], axis=1)
+    weighted = design / variance[near][:, np.newaxis]
+    normal = design.T @ weighted
+    normal[np.diag_indices(4)] *= 1.0 + 1e-9
+    covariance = np.linalg.inv(normal)
+    amplitude = float((covariance @ (weighted.T @ rate[near]))[0])
+    return max(amplitude / math.sqrt(max(float(covariance[0, 0]), 1e-300)), 0.0)
 
 
 def _feature_profile(angles: FloatArray, feature: Feature, kernel: Kernel) -> FloatArray:
@@ -319,9 +325,9 @@ def _fit_cluster(
         + [math.log(height * width_deg)] * len(cluster)
     )
     limits = np.array([0.5 * width_deg, 0.4, 0.3, 1.0, 1.0, 1.0] + [1.0] * len(cluster))
-    low, high = np.full(size, -np.inf), np.full(size, np.inf)
-    low[2], high[2] = 0.0, 1.0
-    return maximise(counts, model, prior, start, limits, bounds=(low, high))
+    least, most = np.full(size, -np.inf), np.full(size, np.inf)
+    least[2], most[2] = 0.0, 1.0
+    return maximise(counts, model, prior, start, limits, bounds=(least, most))
 
 
 def _harvest(scan: str, cluster: tuple[Feature, ...], fit: Maximum) -> Iterator[FittedLine]:
