@@ -37,8 +37,11 @@ def gathered_scan(scan: Scan) -> Scan:
     width = FINEST_DEG
     group = np.floor((scan.reading_deg - scan.reading_deg[0]) / width + 1e-9).astype(np.int64)
     _, group = np.unique(group, return_inverse=True)
-    dwell = np.bincount(group, weights=scan.dwell_s)
-    reading = np.bincount(group, weights=scan.dwell_s * scan.reading_deg) / dwell
+    dwell = np.zeros(int(group[-1]) + 1)
+    np.add.at(dwell, group, scan.dwell_s)
+    reading = np.zeros(dwell.size)
+    np.add.at(reading, group, scan.dwell_s * scan.reading_deg)
+    reading /= dwell
     counts = np.zeros(dwell.size, dtype=np.int64)
     np.add.at(counts, group, scan.counts)
     return replace(scan, reading_deg=reading, counts=counts, dwell_s=dwell)
