@@ -26,6 +26,7 @@ from hdetermine.records.scan import Scan
 REFERENCE_TOLERANCE = 3.0  # in standard uncertainties, between reference and edge scans
 FARTHEST_DEG = 0.35  # between the first look at a line and its fit
 WIDEST_DEG = 1.2
+STRANGE_WIDTH = 0.5  # of the logarithm of two widths
 EXCITED = 1.01  # an energy so little above the threshold excites nothing that can be seen
 
 
@@ -116,16 +117,23 @@ def select_lines(
     """Keep the lines of the edge scans, and those of reference scans that agree with them."""
     reasons: dict[int, str] = {}
     remarks: list[str] = []
-    at_home = [line for line in found if line.scan in own]
-    basis = at_home or list(found)
-    if not basis:
+    if not found:
         return (), reasons, ()
+    sharpest = min(found, key=lambda line: line.fwhm_u_deg / line.fwhm_deg)
+    for line in found:
+        u = math.hypot(line.fwhm_u_deg, sharpest.fwhm_u_deg)
+        strange = abs(math.log(line.fwhm_deg / sharpest.fwhm_deg)) > STRANGE_WIDTH
+        if strange and abs(line.fwhm_deg - sharpest.fwhm_deg) > 3.0 * u:
+            reasons[id(line)] = "its width does not fit that of the other lines"
+    candidates = [line for line in found if id(line) not in reasons]
+    at_home = [line for line in candidates if line.scan in own]
+    basis = at_home or candidates
     shifts = np.array([line.shift_deg for line in basis])
     weights = np.array([line.shift_u_deg for line in basis]) ** -2.0
     middle = float(np.median(shifts))
     spread = 1.4826 * float(np.median(np.abs(shifts - middle)))
     used = []
-    for line in found:
+    for line in candidates:
         if line.scan not in own and at_home:
             mean = float(np.average(shifts, weights=weights))
             u = math.hypot(line.shift_u_deg, float(1.0 / np.sqrt(np.sum(weights))), spread)
@@ -141,7 +149,7 @@ def select_lines(
             reasons[id(line)] = "far from the zero of the other lines"
             continue
         used.append(line)
-    other = {line.scan for line in found if id(line) in reasons and line.scan not in own}
+    other = {line.scan for line in candidates if id(line) in reasons and line.scan not in own}
     remarks.extend(
         f"the reference scan {name} has another zero offset than the scans with edges; its "
         "lines were not used for the zero."
