@@ -14,6 +14,9 @@ FloatArray = NDArray[np.float64]
 Model = Callable[[FloatArray], tuple[FloatArray, FloatArray]]
 Prior = Callable[[FloatArray], tuple[float, FloatArray, FloatArray]]
 
+_STUCK = 1e8  # damping
+_KINK = 1.0  # of the deviance: one standard uncertainty
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Maximum:
@@ -120,7 +123,11 @@ def maximise(
                 break
         else:
             damping = max(damping * 8.0, 1e-4)
-            if damping > 1e8:
+            if damping > _STUCK:
+                # No step gains, as on the kink of a triangular kernel: settled, unless the score
+                # promises more than a standard uncertainty.
+                promised = np.linalg.lstsq(information[index], score[free], rcond=None)[0]
+                converged = bool(score[free] @ promised < _KINK)
                 break
     weighted = jacobian / expected[:, np.newaxis]
     information = weighted.T @ jacobian + np.diag(precision)
