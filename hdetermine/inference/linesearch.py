@@ -27,6 +27,8 @@ REFERENCE_TOLERANCE = 3.0  # in standard uncertainties, between reference and ed
 FARTHEST_DEG = 0.35  # between the first look at a line and its fit
 WIDEST_DEG = 1.2
 STRANGE_WIDTH = 0.5  # of the logarithm of two widths
+DOUBLED_SCORE = 40.0  # match of the lines at twice their angle that betrays 2 theta ...
+DOUBLED_RATIO = 3.0  # ... and its ratio to that at their angle
 EXCITED = 1.01  # an energy so little above the threshold excites nothing that can be seen
 
 
@@ -63,7 +65,7 @@ def find_lines(run: Run) -> tuple[FittedLine, ...]:
     for scan in run.scans:
         every = scan_features(run, scan)
         match = search_zero(scan, every, prior.value, reach)
-        _refuse_doubled_angle(scan, every, prior.value, 0.0 if match is None else match[1])
+        _refuse_doubled_angle(scan, every, prior.value, reach)
         if match is not None and match[1] > SIGNIFICANT:
             matches[scan.name] = match
     found: list[FittedLine] = []
@@ -95,15 +97,23 @@ def _sound(line: FittedLine, scan: Scan, zero_deg: float) -> bool:
 
 
 def _refuse_doubled_angle(
-    scan: Scan, every: tuple[Feature, ...], zero_deg: float, score: float
+    scan: Scan, every: tuple[Feature, ...], zero_deg: float, reach_deg: float
 ) -> None:
-    if score > SIGNIFICANT:
-        return
+    """Refuse a scan over 2 theta.
+
+    Lines of first order over 2 theta stand near those of second order over theta: only the
+    first order can tell, where the scan covers it.
+    """
+    first = tuple(feature for feature in every if feature.order == 1)
     halved = replace(scan, reading_deg=0.5 * scan.reading_deg)
-    if len(covered(halved, every, zero_deg, 0.2)) < 2:
+    if len(covered(halved, first, zero_deg, 0.2)) < 2:
         return
-    doubled = search_zero(halved, every, zero_deg, 0.4)
-    if doubled is not None and doubled[1] > 40.0 and doubled[1] > 8.0 * max(score, 1.0):
+    doubled = search_zero(halved, first, zero_deg, 0.4)
+    if doubled is None or doubled[1] < DOUBLED_SCORE:
+        return
+    known = first if covered(scan, first, zero_deg, 0.2) else every
+    plain = search_zero(scan, known, zero_deg, reach_deg)
+    if plain is None or doubled[1] > DOUBLED_RATIO * plain[1]:
         raise InputError(
             f"scan {scan.name} ({scan.file}): the characteristic lines stand at twice their "
             'glancing angle, so the column seems to hold 2 theta: put abscissa = "two_theta" '
