@@ -95,3 +95,35 @@ def test_interrupted_while_importing(number, name):
     assert ended.returncode == 130
     assert ended.stderr.strip().startswith("hdetermine: interrupted")
     assert "Traceback" not in ended.stderr
+
+
+DROPPED = """
+import os, signal, sys
+import hdetermine.files.runsheet
+
+class Destroyed:
+    def __del__(self):
+        os.kill(os.getpid(), signal.SIGTERM)
+        for _ in range(1000):
+            pass
+
+def read_run(_folder):
+    destroyed = Destroyed()
+    del destroyed
+    signal.pause()
+
+hdetermine.files.runsheet.read_run = read_run
+sys.argv = ["hdetermine", "analyse", "no/such/folder"]
+from hdetermine.__main__ import main
+main()
+"""
+
+
+def test_an_interruption_that_python_drops_is_asked_for_again():
+    """A KeyboardInterrupt inside a destructor or weak reference is printed and forgotten."""
+    ended = subprocess.run(
+        [sys.executable, "-c", DROPPED], capture_output=True, text=True, timeout=60
+    )
+    assert ended.returncode == 130
+    assert "Traceback" not in ended.stderr
+    assert "interrupted" in ended.stderr

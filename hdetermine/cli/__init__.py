@@ -6,6 +6,7 @@ import importlib
 import os
 import signal
 import sys
+import threading
 from collections.abc import Callable
 from types import FrameType
 
@@ -69,6 +70,7 @@ def main(arguments: list[str] | None = None) -> None:
     130: interrupted.
     """
     try:
+        sys.unraisablehook = _unheard
         _on_signals(_interrupt)
         status = _status(arguments)
         _on_signals(_too_late)
@@ -103,6 +105,16 @@ def _on_signals(handler: Callable[[int, FrameType | None], None]) -> None:
 
 def _interrupt(_number: int, _frame: FrameType | None) -> None:
     raise KeyboardInterrupt
+
+
+def _unheard(dropped: sys.UnraisableHookArgs) -> None:
+    """Ask again where Python dropped an interruption: inside a destructor or a weak reference."""
+    if issubclass(dropped.exc_type, KeyboardInterrupt):
+        again = threading.Timer(0.05, os.kill, (os.getpid(), signal.SIGTERM))
+        again.daemon = True
+        again.start()
+    else:
+        sys.__unraisablehook__(dropped)
 
 
 def _too_late(_number: int, _frame: FrameType | None) -> None:
