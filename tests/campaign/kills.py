@@ -181,7 +181,7 @@ def main() -> int:
     options = parser.parse_args()
     # A job in the background of a shell inherits an ignored SIGINT, and hands it on.
     signal.signal(signal.SIGINT, signal.default_int_handler)
-    demo = options.demo or ("molybdenum_rocksalt" if options.command == "analyse" else "class")
+    demo = options.demo or ("molybdenum_rocksalt" if options.command == "analyse" else "class_of_twelve")
     chance = random.Random(options.seed)
     outcomes: Counter[str] = Counter()
     faults = 0
