@@ -35,6 +35,7 @@ GROUPS: Mapping[str, str] = {
     measurement.WAVELENGTH_SCALE: "reference wavelengths",
     "continuum.smooth_1": "smooth factor of the continuum",
     "continuum.smooth_2": "smooth factor of the continuum",
+    "continuum.smooth_3": "smooth factor of the continuum",
 }
 SCAN_GROUPS: Mapping[str, str] = {
     "counting_deg": "counting statistics",
@@ -139,11 +140,14 @@ def limiting_sentence(budget: Budget) -> str:
     leading = [
         f"{group} ({_percent(share)})" for group, share in list(shares.items())[:3] if share > 0.05
     ]
-    common = common_share(budget)
-    limits = ", ".join(leading) or "no single input by more than 5\N{NARROW NO-BREAK SPACE}%"
+    if leading:
+        leading[0] = leading[0].replace(")", " of the variance)")
+        limits = " and ".join(filter(None, (", ".join(leading[:-1]), leading[-1])))
+    else:
+        limits = "no single source by more than 5\N{NARROW NO-BREAK SPACE}% of the variance"
     return (
-        f"{budget.measurand} is limited by {limits}; {_percent(common)} of the variance is common "
-        "to all voltages and does not shrink with more of them."
+        f"{budget.measurand} is limited by {limits}; {_percent(common_share(budget))} of the "
+        "variance is common to all voltages, and more voltages would not lower that."
     )
 
 

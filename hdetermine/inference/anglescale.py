@@ -31,7 +31,7 @@ FloatArray = NDArray[np.float64]
 
 NOTABLE_SCATTER = 2.0  # chi-square per degree of freedom
 LEARNT = 0.9  # lines fix the spacing if they shrink its variance below this fraction
-FORM_FLOOR = 0.005  # of the width: no line stands nearer to its place than its form is known
+FORM_FLOOR = 0.003  # of the width: no line stands nearer to its place than its form is known
 RESOLUTION_FLOOR = 0.01  # relative; the form of the kernel is never known better
 BLEND_U = 2e-5  # relative; satellites and doublet ratio against the tabulated peak
 

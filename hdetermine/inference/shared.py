@@ -2,11 +2,11 @@
 
 Transmission, crystal and counter multiply every spectrum by one smooth function of wavelength,
 
-    ln T = t1 ln r + t2 (ln r)^2,    r = wavelength over a reference wavelength,
+    ln T = t1 ln r + t2 (ln r)^2 + t3 (ln r)^3,    r = wavelength over a reference wavelength,
 
-so the smooth terms of each edge, a1 = t1 + 2 t2 ln r0 and a2 = t2, are not free but follow from t
-up to a small freedom of their own (the target's own absorption changes a little with the
-voltage). Where
+so the smooth terms of an edge at r0, a1 = t1 + 2 t2 ln r0 + 3 t3 (ln r0)^2 and a2 = t2 + 3 t3
+ln r0, are not free but follow from t up to a small freedom of their own (the target's own
+absorption changes a little with the voltage). Where
 neither lines nor run sheet tell the width of the smearing, the edges share that too. Each fit
 tells by its profile likelihood how it would like the shared numbers g to change; their sum, with
 weak priors, is climbed by Newton steps. The result is a further set of inputs of the
@@ -36,7 +36,9 @@ from hdetermine.records.quantity import Quantity
 
 FloatArray = NDArray[np.float64]
 
-SMOOTH_NAMES = tuple(f"continuum.smooth_{k}" for k in (1, 2))
+SMOOTH_NAMES = tuple(f"continuum.smooth_{k}" for k in (1, 2, 3))
+TERMS = len(SMOOTH_NAMES)
+_CUBIC_U = 3.0  # weak prior of t3; those of t1 and t2 stand in `edgemodel`
 OWN_FREEDOM = (0.3, 0.6)  # standard deviations of a1 and a2 about the shared function
 _WIDTH_STEP = 1e-3
 _ROUNDS = 15
@@ -96,14 +98,15 @@ def edge_sine(fit: EdgeFit) -> float:
 
 
 def smooth_map(ratio: float) -> FloatArray:
-    """Expected (a1, a2) of an edge per unit of (t1, t2), shape (2, 2).
+    """Expected (a1, a2) of an edge per unit of (t1, t2, t3), shape (2, 3).
 
     Parameters
     ----------
     ratio : float
         Wavelength of the edge over the reference wavelength.
     """
-    return np.array([[1.0, 2.0 * math.log(ratio)], [0.0, 1.0]])
+    position = math.log(ratio)
+    return np.array([[1.0, 2.0 * position, 3.0 * position**2], [0.0, 1.0, 3.0 * position]])
 
 
 def by_input(fit: EdgeFit, changed: Surroundings, change: float) -> FloatArray:
@@ -155,7 +158,7 @@ def _pull(fit: EdgeFit) -> _Pull:
 
 def _map(fit: EdgeFit, reference_sine: float, width_free: bool) -> FloatArray:
     """Derivative of (width, a1, a2) by the shared numbers, shape (3, g)."""
-    smooth = np.zeros((3, 2))
+    smooth = np.zeros((3, TERMS))
     smooth[1:] = smooth_map(edge_sine(fit) / reference_sine)
     if not width_free:
         return smooth
@@ -180,8 +183,8 @@ def share(fits: tuple[EdgeFit, ...], stated: Quantity, *, width_free: bool) -> S
     """
     reference = math.exp(float(np.mean([math.log(edge_sine(fit)) for fit in fits])))
     maps = [_map(fit, reference, width_free) for fit in fits]
-    precision = np.array(SMOOTH_U) ** -2.0
-    centre = np.array(SMOOTH_MEAN)
+    precision = np.array([*SMOOTH_U, _CUBIC_U]) ** -2.0
+    centre = np.array([*SMOOTH_MEAN, 0.0])
     if width_free:
         known = math.isfinite(stated.standard_uncertainty)
         precision = np.concatenate([[stated.standard_uncertainty**-2 if known else 0.0], precision])
@@ -197,7 +200,7 @@ def share(fits: tuple[EdgeFit, ...], stated: Quantity, *, width_free: bool) -> S
         if width_free:
             step[0] = np.clip(step[0], -0.4 * numbers[0], 0.4 * numbers[0])
             step[0] = np.clip(numbers[0] + step[0], narrowest, _WIDEST_DEG) - numbers[0]
-        step[-2:] = np.clip(step[-2:], -2.0, 2.0)
+        step[-TERMS:] = np.clip(step[-TERMS:], -2.0, 2.0)
         numbers = np.asarray(numbers + step, dtype=np.float64)
         fits = _refit(fits, maps, numbers, width_free)
         if np.max(np.abs(step) * np.sqrt(np.diag(information))) < _SETTLED:
@@ -255,10 +258,10 @@ def _quantities(
     smooth = tuple(
         Quantity(name, f"t{k}", float(value), float(spread), "1", evaluation="A", source="edges")
         for k, (name, value, spread) in enumerate(
-            zip(SMOOTH_NAMES, numbers[-2:], u[-2:], strict=True), start=1
+            zip(SMOOTH_NAMES, numbers[-TERMS:], u[-TERMS:], strict=True), start=1
         )
     )
-    if numbers.size == 2:
+    if numbers.size == TERMS:
         return smooth
     known = math.isfinite(stated.standard_uncertainty)
     width = Quantity(

@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import re
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 from hdetermine.inference import measurement as names
-from hdetermine.records.results import Budget, RouteName
+from hdetermine.records.results import Budget, Check, RouteName
 
 WORDS: dict[str, str] = {
     names.GAIN: "gain of the voltage display",
@@ -28,6 +29,7 @@ WORDS: dict[str, str] = {
     "continuum.smooth_*": "smooth factor of the continuum",
     "continuum.smooth_1": "smooth factor of the continuum, first term",
     "continuum.smooth_2": "smooth factor of the continuum, second term",
+    "continuum.smooth_3": "smooth factor of the continuum, third term",
 }
 SCAN_WORDS: dict[str, str] = {
     "counting_deg": "counting statistics",
@@ -89,3 +91,19 @@ def sources(budget: Budget) -> tuple[Source, ...]:
         Source(words, share, common, count) for (words, common), (share, count) in found.items()
     ]
     return tuple(sorted(listed, key=lambda one: -one.variance_share))
+
+
+def checks_in_words(checks: Sequence[Check]) -> str:
+    """Say in one sentence how the consistency checks went; failed ones are named."""
+    failed = [check.name for check in checks if check.passed is False]
+    done = sum(check.passed is not None for check in checks)
+    if not done:
+        return "No consistency check was possible."
+    if not failed:
+        several = f"All {done} consistency checks" if done > 1 else "The one consistency check"
+        return f"{several} that the data allow passed."
+    asks = "asks" if len(failed) == 1 else "ask"
+    return (
+        f"{len(failed)} of {done} consistency checks failed and {asks} for a second look before "
+        f"the result is used: {'; '.join(failed)}."
+    )
