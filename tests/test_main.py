@@ -119,6 +119,27 @@ main()
 """
 
 
+@pytest.mark.parametrize("interrupted", [True, False])
+def test_an_import_that_fails_because_it_was_interrupted(interrupted):
+    """`__set_name__` turns the interruption into a RuntimeError (found by the kill campaign)."""
+    signalled = "os.kill(os.getpid(), signal.SIGTERM)" if interrupted else "raise ValueError"
+    code = DROPPED.replace("destroyed = Destroyed()", "make()").replace("del destroyed", "")
+    code = code.replace(
+        "def read_run",
+        f"""class Named:
+    def __set_name__(self, owner, name):
+        {signalled}
+
+def make():
+    type("Owner", (), {{"name": Named()}})
+
+def read_run""",
+    )
+    ended = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, timeout=60)
+    assert ended.returncode == (130 if interrupted else 1)
+    assert ("Traceback" in ended.stderr) is not interrupted
+
+
 def test_an_interruption_that_python_drops_is_asked_for_again():
     """A KeyboardInterrupt inside a destructor or weak reference is printed and forgotten."""
     ended = subprocess.run(

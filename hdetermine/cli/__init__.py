@@ -61,6 +61,8 @@ def root() -> None:
 
 
 INTERRUPTED = 130
+_asked = threading.Event()
+"""Set once a signal has asked this process to stop."""
 
 
 def main(arguments: list[str] | None = None) -> None:
@@ -74,7 +76,10 @@ def main(arguments: list[str] | None = None) -> None:
         _on_signals(_interrupt)
         status = _status(arguments)
         _on_signals(_too_late)
-    except (KeyboardInterrupt, click.Abort):
+    except BaseException as fault:
+        # Interrupted inside an import, a process can fail with an error of any kind.
+        if not (_asked.is_set() or isinstance(fault, (KeyboardInterrupt, click.Abort))):
+            raise
         _on_signals(_too_late)
         click.echo("hdetermine: interrupted; no output is half-written.", err=True)
         status = INTERRUPTED
@@ -104,6 +109,7 @@ def _on_signals(handler: Callable[[int, FrameType | None], None]) -> None:
 
 
 def _interrupt(_number: int, _frame: FrameType | None) -> None:
+    _asked.set()
     raise KeyboardInterrupt
 
 
