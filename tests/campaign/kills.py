@@ -177,11 +177,14 @@ def main() -> int:
     parser.add_argument("--trials", type=int, default=200)
     parser.add_argument("--command", choices=["analyse", "check"], default="analyse")
     parser.add_argument("--demo", default="", help="name of the demo; a fitting one if not given")
+    parser.add_argument("--every", type=int, default=1, help="only each n-th scan of a run")
     parser.add_argument("--seed", type=int, default=1, help="of the random moments")
     options = parser.parse_args()
     # A job in the background of a shell inherits an ignored SIGINT, and hands it on.
     signal.signal(signal.SIGINT, signal.default_int_handler)
-    demo = options.demo or ("molybdenum_rocksalt" if options.command == "analyse" else "class_of_twelve")
+    demo = options.demo or (
+        "molybdenum_rocksalt" if options.command == "analyse" else "class_of_twelve"
+    )
     chance = random.Random(options.seed)
     outcomes: Counter[str] = Counter()
     faults = 0
@@ -189,6 +192,10 @@ def main() -> int:
         work = Path(name)
         source = work / "source"
         shutil.copytree(shipped_folder("demo_runs") / demo, source)
+        if options.every > 1:
+            sheet = source / "run.toml"
+            head, *scans = sheet.read_text("utf-8").split("[[scan]]")
+            sheet.write_text("[[scan]]".join([head, *scans[:: options.every]]), "utf-8")
         campaign = Campaign(options.command, source, work)
         print(f"{options.command} of {demo} takes {campaign.duration:.1f} s undisturbed")
         for trial in range(options.trials):
