@@ -7,7 +7,8 @@ import pytest
 from simulated import TRUTH, simulated, voltages
 
 from hdetermine.errors import InputError
-from hdetermine.inference.linefit import FittedLine, features
+from hdetermine.inference.features import features
+from hdetermine.inference.linefit import FittedLine
 from hdetermine.inference.linesearch import energy_eV, find_lines, line_measures, select_lines
 
 LINES_TRUTH = {**TRUTH, "to_deg": 9.5}

@@ -18,7 +18,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
-from hdetermine.inference.linefit import FittedLine
+from hdetermine.inference.linefit import KERNEL_CENTRE, KERNEL_U, FittedLine
 from hdetermine.inference.linesearch import find_lines, line_measures, select_lines
 from hdetermine.inference.measurement import WAVELENGTH_SCALE
 from hdetermine.inference.spacing import free_fit, joint_inputs, spacing_gradient, spacing_u
@@ -162,11 +162,13 @@ def _resolution(apparatus: Apparatus, used: tuple[FittedLine, ...]) -> tuple[Qua
     form = np.array([line.triangular_fraction for line in used])
     form_weight = np.array([line.triangular_fraction_u for line in used]) ** -2.0
     prior = apparatus.goniometer.kernel_triangular_fraction
-    # Every fit carried the prior of the kernel; count it once, not once a line.
+    # Every fit carried a prior of the kernel: take it out, and count that of the run sheet once.
+    carried = (KERNEL_U * np.array([line.misfit for line in used])) ** -2.0
+    surplus = np.maximum(form_weight - carried, 0.0)
+    told = np.where(surplus > 0.0, form_weight * form - carried * KERNEL_CENTRE, 0.0)
     prior_weight = 1.0 / max(prior.standard_uncertainty, 1e-6) ** 2
-    surplus = np.maximum(form_weight - prior_weight, 0.0)
     total = float(np.sum(surplus)) + prior_weight
-    value = (float(np.sum(surplus * form)) + prior_weight * prior.value) / total
+    value = (float(np.sum(told)) + prior_weight * prior.value) / total
     kernel_u = math.hypot(math.sqrt(1.0 / total), 0.05)
     if kernel_u > LEARNT * prior.standard_uncertainty:
         return resolution, prior

@@ -14,17 +14,15 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from hdetermine.inference.features import Feature, covered
 from hdetermine.inference.scoring import Maximum, maximise
 from hdetermine.inference.smearing import Kernel
-from hdetermine.physics.bragg import glancing_angle_deg
 from hdetermine.physics.counting import recorded_rate, recorded_slope
-from hdetermine.physics.lines import LineGroup, excited_groups
 from hdetermine.records.apparatus import DeadTimeModel
 from hdetermine.records.scan import Scan
 
 FloatArray = NDArray[np.float64]
 
-ORDERS = (1, 2, 3)
 _REACH_WIDTHS = 2.2
 _NARROW_REACH_DEG = 0.35
 _LOOK_DEG = 0.9  # half window of the first look at a line
@@ -33,34 +31,8 @@ SIGNIFICANT = 8.0  # amplitude over its standard uncertainty
 _LOCAL = 6  # position, log width, kernel, and level, slope and bend of the log background
 _BACKGROUND_U = (3.0, 0.7)  # weak priors of slope and bend over half the window
 _WIDEST_DEG = 0.8
-_KERNEL_U = 0.29  # of a rectangular distribution between Gaussian and triangle
-
-
-@dataclass(frozen=True, slots=True)
-class Feature:
-    """A group of lines in one order, as it should stand on an ideal goniometer.
-
-    `components` are (true angle in degrees, natural FWHM in degrees, strength), strongest
-    first; `by_spacing` is the change of the angle with the relative spacing, `by_wavelength`
-    with the relative wavelength, degrees.
-    """
-
-    group: LineGroup
-    order: int
-    components: tuple[tuple[float, float, float], ...]
-    by_spacing: float
-    by_wavelength: float
-
-    @property
-    def angle_deg(self) -> float:
-        """True angle of the strongest line, degrees."""
-        return self.components[0][0]
-
-    @property
-    def label(self) -> str:
-        """Name with the order, for instance ``Mo K-L2,3 (n = 2)``."""
-        suffix = "" if self.order == 1 else f" (n = {self.order})"
-        return self.group.label + suffix
+# Prior of the kernel's form: a rectangular distribution between Gaussian and triangle.
+KERNEL_CENTRE, KERNEL_U = 0.5, 0.29
 
 
 @dataclass(frozen=True, slots=True)
@@ -77,48 +49,6 @@ class FittedLine:
     triangular_fraction_u: float
     significance: float
     misfit: float
-
-
-def features(
-    anode: str, energy_eV: float, spacing_pm: float, refraction: float
-) -> tuple[Feature, ...]:
-    """Every line group of an anode that electrons of this energy excite, by angle.
-
-    Parameters
-    ----------
-    anode : str
-        Chemical symbol.
-    energy_eV : float
-        Energy of the electrons.
-    spacing_pm : float
-        Spacing at the temperature of the run.
-    refraction : float
-        delta/sin^2(theta) in first order.
-    """
-    found = []
-    for group in excited_groups(anode, energy_eV):
-        for order in ORDERS:
-            components = []
-            for line in group.lines:
-                angle = float(glancing_angle_deg(line.wavelength_pm, spacing_pm, refraction, order))
-                tangent = math.tan(math.radians(angle))
-                # dE/E = dlambda/lambda, and the lines lie far above their widths.
-                relative = line.width_eV / (line.excitation_eV * 0.9)
-                components.append((angle, math.degrees(relative * tangent), line.strength))
-            if not all(math.isfinite(angle) and angle < 80.0 for angle, _, _ in components):
-                continue
-            tangent = math.degrees(math.tan(math.radians(components[0][0])))
-            found.append(Feature(group, order, tuple(components), -tangent, tangent))
-    return tuple(sorted(found, key=lambda feature: feature.angle_deg))
-
-
-def covered(
-    scan: Scan, every: tuple[Feature, ...], zero_deg: float, fwhm_deg: float
-) -> tuple[Feature, ...]:
-    """Features whose core lies well inside a scan."""
-    low = scan.reading_deg[0] + fwhm_deg
-    high = scan.reading_deg[-1] - fwhm_deg
-    return tuple(f for f in every if low < f.angle_deg + zero_deg < high)
 
 
 def search_zero(
@@ -158,7 +88,8 @@ def _prominence(
     if int(near.sum()) < _LEAST_LOOK:
         return 0.0
     away = distance[near] / _LOOK_DEG
-    profile = _feature_profile(angles[near], feature, Kernel(0.25, 0.5))
+    centre, _, strength = np.array(feature.components).T
+    profile = Kernel(0.25, 0.5).profile(angles[near][:, np.newaxis] - centre) @ strength
     design = np.stack([profile, np.ones_like(away), away, away**2], axis=1)
     weighted = design / variance[near][:, np.newaxis]
     normal = design.T @ weighted
@@ -311,7 +242,7 @@ def _fit_cluster(
         return np.maximum(expected, 1e-9), slope[:, np.newaxis] * np.stack(columns, axis=1)
 
     precision, centre = np.zeros(size), np.zeros(size)
-    precision[2], centre[2] = _KERNEL_U**-2, 0.5
+    precision[2], centre[2] = KERNEL_U**-2, KERNEL_CENTRE
     precision[4:_LOCAL] = np.array(_BACKGROUND_U) ** -2.0
 
     def prior(parameters: FloatArray) -> tuple[float, FloatArray, FloatArray]:

@@ -8,15 +8,8 @@ from dataclasses import replace
 import numpy as np
 
 from hdetermine.errors import InputError
-from hdetermine.inference.linefit import (
-    SIGNIFICANT,
-    Feature,
-    FittedLine,
-    covered,
-    features,
-    fit_lines,
-    search_zero,
-)
+from hdetermine.inference.features import Feature, covered, features
+from hdetermine.inference.linefit import SIGNIFICANT, FittedLine, fit_lines, search_zero
 from hdetermine.inference.spacing import crystal_spacing_pm
 from hdetermine.records.apparatus import Apparatus
 from hdetermine.records.results import LineMeasure

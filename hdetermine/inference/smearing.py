@@ -55,13 +55,27 @@ class Kernel:
     ) -> FloatArray:
         """Kernel with unit area at a distance from its centre, 1/degree.
 
-        A natural line width enters the Gaussian part as a Voigt profile; in the triangular
-        part it is left out (it is small beside the resolution).
+        A natural line width is that of a Lorentzian, with which both parts are convolved: the
+        Gaussian one is a Voigt profile then, the triangular one a second difference of the
+        Lorentzian integrated twice.
         """
-        gauss = voigt_profile(distance_deg, self.sigma_deg, 0.5 * natural_fwhm_deg)
-        flank = np.maximum(1.0 - np.abs(distance_deg) / self.fwhm_deg, 0.0) / self.fwhm_deg
-        mix = self.triangular_fraction
-        return np.asarray((1.0 - mix) * gauss + mix * flank)
+        half = 0.5 * np.asarray(natural_fwhm_deg)
+        gauss = voigt_profile(distance_deg, self.sigma_deg, half)
+        width, mix = self.fwhm_deg, self.triangular_fraction
+        if half.any():
+            places = np.stack([distance_deg + width, distance_deg, distance_deg - width])
+            above, middle, below = _twice_integrated(places, half)
+            triangle = (above - 2.0 * middle + below) / width**2
+        else:
+            triangle = np.maximum(1.0 - np.abs(distance_deg) / width, 0.0) / width
+        return np.asarray((1.0 - mix) * gauss + mix * triangle)
+
+
+def _twice_integrated(distance_deg: FloatArray, half_deg: FloatArray) -> FloatArray:
+    """Lorentzian of this half width at half maximum, integrated twice over the distance."""
+    half = np.maximum(half_deg, 1e-12)
+    arc = distance_deg * np.arctan(distance_deg / half)
+    return np.asarray((arc - 0.5 * half * np.log(distance_deg**2 + half**2)) / np.pi)
 
 
 def quadrature(
