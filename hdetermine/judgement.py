@@ -33,6 +33,10 @@ CHANCE = 0.01
 ROUTE_LIMIT = 0.3  # between routes, in units of u
 INFLUENCE_LIMIT = 2.0  # shift of h in units of u(h) when one scan is left out
 
+# What the figures of the checks are.
+IN_U = "difference / its u"
+BIRGE = "Birge ratio"
+
 
 def compare(h: PlanckValue) -> Comparison:
     """Compare the result with the exact SI value.
@@ -85,9 +89,9 @@ def read_backwards(budget: Budget) -> ReadBackwards:
 def _difference(name: str, figure: float | None, passing: str, failing: str, none: str) -> Check:
     """Build a check of a difference in standard uncertainties."""
     if figure is None or not math.isfinite(figure):
-        return Check(name, None, None, DIFFERENCE_LIMIT, none)
+        return Check(name, None, None, DIFFERENCE_LIMIT, none, IN_U)
     passed = abs(figure) <= DIFFERENCE_LIMIT
-    return Check(name, passed, figure, DIFFERENCE_LIMIT, passing if passed else failing)
+    return Check(name, passed, figure, DIFFERENCE_LIMIT, passing if passed else failing, IN_U)
 
 
 def consistency(
@@ -103,12 +107,13 @@ def consistency(
         _zero(apparatus, scale),
         _spacing(apparatus, scale),
         _difference(
-            "resolution of edges and lines",
+            "width of the edges against the lines",
             scale.edge_pull,
-            "Edges and lines are smeared alike.",
-            "The edges are smeared unlike the lines: the high voltage may ripple, or the "
-            "collimation change with the angle.",
-            "Lines and edges cannot be compared.",
+            "The edges are as wide as the lines let expect.",
+            f"The edges are {_wider_or_narrower(scale)} than the lines let expect and were fitted "
+            "with their own width: the high voltage may ripple, or the collimation change with "
+            "the angle.",
+            "No line tells the width, so it cannot be compared.",
         ),
         _fits(cutoffs),
         _scatter(relation),
@@ -117,7 +122,7 @@ def consistency(
             relation.intercept_pm / math.sqrt(relation.free_covariance[1, 1])
             if math.isfinite(relation.intercept_pm)
             else None,
-            "The line goes through the origin.",
+            f"The line passes through the origin within its uncertainty{_widened(relation)}.",
             "The line misses the origin: a zero error of the goniometer, an offset of the "
             "voltage, or a supply that is not linear.",
             "Fewer than three voltages: not tested.",
@@ -127,7 +132,8 @@ def consistency(
             (relation.exponent - 1.0) / relation.exponent_u
             if math.isfinite(relation.exponent)
             else None,
-            "Cutoff and voltage are inversely proportional.",
+            "Cutoff and voltage are inversely proportional within the uncertainty"
+            f"{_widened(relation)}.",
             "Cutoff and voltage are not inversely proportional: look at the voltages and the "
             "zero offset.",
             "Fewer than three voltages: not tested.",
@@ -140,8 +146,18 @@ def consistency(
             comparison.E_n,
             1.0,
             f"The result {comparison.verdict}.",
+            "Eₙ",
         ),
     )
+
+
+def _wider_or_narrower(scale: AngleScale) -> str:
+    return "narrower" if scale.edge_pull is not None and scale.edge_pull < 0.0 else "wider"
+
+
+def _widened(relation: Relation) -> str:
+    """Say what makes a difference look smaller than the inputs alone would."""
+    return ", which includes the added scatter" if relation.scatter_deg > 0.0 else ""
 
 
 def _zero(apparatus: Apparatus, scale: AngleScale) -> Check:
@@ -153,7 +169,7 @@ def _zero(apparatus: Apparatus, scale: AngleScale) -> Check:
     return _difference(
         "zero offset of the lines against the run sheet",
         figure,
-        "The lines stand where the stated zero offset lets them be expected.",
+        "The zero offset from the lines agrees with the stated one.",
         "The lines want another zero offset than the run sheet states; that of the lines was used.",
         "No line was found, so the zero offset is the stated one.",
     )
@@ -176,10 +192,10 @@ def _spacing(apparatus: Apparatus, scale: AngleScale) -> Check:
 
 
 def _fits(cutoffs: tuple[Cutoff, ...]) -> Check:
-    name = "fits against the counts"
+    name, measure = "fits against the counts", "deviance / degrees of freedom"
     used = [cutoff for cutoff in cutoffs if cutoff.used and cutoff.degrees_of_freedom > 0]
     if not used:
-        return Check(name, None, None, None, "No fit has a degree of freedom left.")
+        return Check(name, None, None, None, "No fit has a degree of freedom left.", measure)
     deviance = sum(cutoff.deviance for cutoff in used)
     freedom = sum(cutoff.degrees_of_freedom for cutoff in used)
     limit = float(chi2_distribution.isf(CHANCE, freedom)) / freedom
@@ -194,13 +210,14 @@ def _fits(cutoffs: tuple[Cutoff, ...]) -> Check:
         if passed
         else "The counts scatter more about the fits than counting explains: rounded rates, "
         "an unsteady tube, or a shape that the model does not know.",
+        measure,
     )
 
 
 def _scatter(relation: Relation) -> Check:
-    name = "scatter of the voltages (Birge ratio)"
+    name = "scatter between the scans"
     if relation.degrees_of_freedom < 1:
-        return Check(name, None, None, None, "One voltage alone cannot show any scatter.")
+        return Check(name, None, None, None, "One scan alone cannot show any scatter.", BIRGE)
     freedom = relation.degrees_of_freedom
     limit = math.sqrt(float(chi2_distribution.isf(CHANCE, freedom)) / freedom)
     if relation.scatter_deg > 0.0:
@@ -209,8 +226,10 @@ def _scatter(relation: Relation) -> Check:
             False,
             relation.stated_birge_ratio,
             limit,
-            "The voltages scatter more than their uncertainties allow; the excess was added to "
-            "the uncertainty, but its cause should be found.",
+            "The values of h from single scans scatter more than their uncertainties allow. The "
+            "excess was added to the uncertainty as if it were random: look for its cause, and "
+            "for a trend in the residuals of the relation.",
+            f"{BIRGE} before that",
         )
     passed = relation.birge_ratio <= limit
     return Check(
@@ -218,16 +237,18 @@ def _scatter(relation: Relation) -> Check:
         passed,
         relation.birge_ratio,
         limit,
-        "The voltages agree with one h within their uncertainties."
+        "The values of h from single scans agree within their uncertainties."
         if passed
-        else "The voltages do not agree with one h within their uncertainties.",
+        else "The values of h from single scans do not agree within their uncertainties.",
+        BIRGE,
     )
 
 
 def _leave_one_out(relation: Relation) -> Check:
-    name = "influence of a single scan"
+    name, measure = "influence of a single scan", "largest shift of h / u"
     if len(relation.influence) < 3:
-        return Check(name, None, None, INFLUENCE_LIMIT, "Too few scans to leave one out.")
+        none = "Too few scans to leave one out."
+        return Check(name, None, None, INFLUENCE_LIMIT, none, measure)
     worst = max(relation.influence, key=lambda one: abs(one.shift_in_u))
     passed = abs(worst.shift_in_u) <= INFLUENCE_LIMIT
     return Check(
@@ -238,16 +259,18 @@ def _leave_one_out(relation: Relation) -> Check:
         "No single scan decides the result."
         if passed
         else f"The scan {worst.scan} alone moves the result by {abs(worst.shift_in_u):.1f} u.",
+        measure,
     )
 
 
 def _routes_agree(routes: Mapping[str, Route]) -> Check:
     """Compare the usable routes with the linear one, in units of its u."""
-    name = "routes against each other"
+    name = "agreement of the routes"
+    measure = "largest difference / u"
     base = routes["linear"]
     others = [route for key, route in routes.items() if key != "linear" and route.usable]
     if not others or not base.standard_uncertainty_J_s > 0.0:
-        return Check(name, None, None, ROUTE_LIMIT, "Only one route was taken.")
+        return Check(name, None, None, ROUTE_LIMIT, "Only one route was taken.", measure)
     u = base.standard_uncertainty_J_s
     worst = max(
         max(
@@ -262,8 +285,9 @@ def _routes_agree(routes: Mapping[str, Route]) -> Check:
         passed,
         worst,
         ROUTE_LIMIT,
-        "All routes tell the same h and u."
+        "All routes that can be used give nearly the same h and u."
         if passed
         else "The routes differ: the relation is not linear over the uncertainties, or the data "
         "teach something about an input.",
+        measure,
     )

@@ -101,7 +101,7 @@ class ReadBackwards:
 class Check:
     """A consistency check: its figure, its limit and what it means.
 
-    `passed` is None where the data do not allow the check.
+    `passed` is None where the data do not allow the check; `measure` says what the figure is.
     """
 
     name: str
@@ -109,6 +109,7 @@ class Check:
     figure: float | None
     limit: float | None
     meaning: str
+    measure: str = ""
 
 
 @dataclass(frozen=True, slots=True)
