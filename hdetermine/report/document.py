@@ -10,8 +10,9 @@ from hdetermine.records.scan import Scan
 from hdetermine.report import rows, rows_budget, rows_routes, rows_scale, rows_source
 from hdetermine.report.figure_svg import Picture
 from hdetermine.report.figures import Figures, draw_figures
-from hdetermine.report.plaintext import plain, sentence
+from hdetermine.report.plaintext import plain, remark, sentence
 from hdetermine.report.rounding import typeset_plus_minus
+from hdetermine.report.spoken import checks_in_words
 from hdetermine.report.table import Cell, Table, decimals, spelled, united
 
 
@@ -29,8 +30,10 @@ class Lead:
         Relative deviation from the SI value, and E_n.
     verdict, limits, route : str
         One sentence each.
-    agrees : bool
-        True if |E_n| is at most 1.
+    checks : str
+        How many consistency checks passed, and the names of those that failed.
+    agrees, sound : bool
+        True if |E_n| is at most 1, and if no check failed.
     """
 
     value: str
@@ -40,7 +43,9 @@ class Lead:
     verdict: str
     limits: str
     route: str
+    checks: str
     agrees: bool
+    sound: bool
 
 
 @dataclass(frozen=True, slots=True)
@@ -133,14 +138,14 @@ def report_document(
         tables=_tables(d),
         scans=() if brief else _panels(d, pictures),
         posterior_state="absent" if posterior is None else "" if posterior.usable else "unusable",
-        scale_remarks=tuple(sentence(text) for text in d.angle_scale.remarks),
-        run_remarks=tuple(sentence(text) for text in d.run.remarks),
+        scale_remarks=tuple(remark(text) for text in d.angle_scale.remarks),
+        run_remarks=tuple(remark(text) for text in d.run.remarks),
         program=f"hdetermine {d.provenance.package_version}",
     )
 
 
 def lead(d: Determination) -> Lead:
-    """Put the result into one line and three sentences."""
+    """Put the result into one line and four sentences."""
     h, comparison = d.h, d.comparison
     text = united(typeset_plus_minus(h.value_J_s, h.expanded_uncertainty_J_s), "J s")
     probability = decimals(100.0 * h.coverage_probability, 1, "%").text.replace(".0", "")
@@ -152,7 +157,9 @@ def lead(d: Determination) -> Lead:
         verdict=_clause(sentence(comparison.verdict)),
         limits=limiting_sentence(d.budget),
         route=sentence(h.route_reason),
+        checks=checks_in_words(d.checks),
         agrees=abs(comparison.E_n) <= 1.0,
+        sound=all(check.passed is not False for check in d.checks),
     )
 
 
@@ -164,15 +171,18 @@ def _clause(verdict: str) -> str:
 def apparatus_line(d: Determination) -> str:
     """Name anode, crystal and voltages in one line."""
     kit = d.run.apparatus
-    voltages = [cutoff.tube_voltage_kV for cutoff in d.cutoffs]
-    span = f"{min(voltages):g}"
-    if max(voltages) > min(voltages):
-        span += f" to {max(voltages):g}"
     parts = [
         f"{plain(kit.tube.anode, 20)} anode",
         f"{plain(kit.crystal.material, 20)} ({plain(kit.crystal.reflection, 12)}) crystal",
-        f"{len(voltages)} scan{'s' if len(voltages) != 1 else ''} at {united(span, 'kV')}",
     ]
+    for meant, purpose in ((True, ""), (False, " for the lines only")):
+        voltages = [scan.tube_voltage_kV for scan in d.run.scans if scan.edge is meant]
+        if voltages:
+            span = f"{min(voltages):g}"
+            if max(voltages) > min(voltages):
+                span += f" to {max(voltages):g}"
+            plural = "s" if len(voltages) != 1 else ""
+            parts.append(f"{len(voltages)} scan{plural} at {united(span, 'kV')}{purpose}")
     if kit.tube.filter:
         parts.insert(1, f"{plain(kit.tube.filter, 20)} filter")
     return ", ".join(parts)
@@ -188,6 +198,8 @@ def _tables(d: Determination) -> dict[str, Table]:
         rows.check_rows(d),
         rows.improvement_rows(d),
         rows.refused_rows(d),
+        rows_budget.source_rows(d.budget),
+        rows_budget.correlated_rows(d.budget),
         rows_budget.budget_rows(d.budget),
         rows_scale.scale_rows(d),
         rows_scale.line_rows(d),
@@ -198,6 +210,7 @@ def _tables(d: Determination) -> dict[str, Table]:
         rows_routes.prior_rows(posterior),
         rows_routes.sensitivity_rows(posterior),
         rows_source.file_rows(d),
+        rows_source.scan_rows(d),
         rows_source.version_rows(d),
         rows_source.setting_rows(d),
         rows_source.sheet_rows(d),
@@ -222,6 +235,6 @@ def _panel(number: int, scan: Scan, cutoff: Cutoff, drawn: tuple[Picture, ...]) 
         heading=f"{plain(scan.name, 60)}, {voltage}",
         used=cutoff.used,
         facts=rows.scan_facts(cutoff),
-        remarks=tuple(sentence(text) for text in remarks),
+        remarks=tuple(remark(text) for text in remarks),
         pictures=drawn,
     )

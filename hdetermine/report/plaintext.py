@@ -33,3 +33,15 @@ def plain(text: str, longest: int = LONGEST) -> str:
 def sentence(text: str, longest: int = 500) -> str:
     """Return a sentence of the program's own, its negative numbers with a true minus."""
     return re.sub(r"(?<![\w.\-])-(?=\d)", MINUS, plain(text, longest))
+
+
+def remark(text: str, longest: int = 500) -> str:
+    """Return a remark as a sentence that can stand alone: a capital in front, a stop behind.
+
+    A first word that is no plain word (a file, a scan) keeps its spelling.
+    """
+    said = sentence(text, longest).replace(" x ", " × ")
+    first, _, rest = said.partition(" ")
+    if rest and first.isalpha() and first.islower():
+        said = said[0].upper() + said[1:]
+    return said if not said or said[-1] in ".!?…" else f"{said}."

@@ -2,17 +2,20 @@
 
 from __future__ import annotations
 
+import re
+
 from hdetermine.budget.planck import limiting_sentence
 from hdetermine.records.results import Determination
-from hdetermine.report.plaintext import plain
-from hdetermine.report.spoken import sources
-from hdetermine.report.table import decimals, plus_minus, with_uncertainty
+from hdetermine.report.plaintext import plain, remark
+from hdetermine.report.spoken import ROUTE_WORDS, checks_in_words
+from hdetermine.report.table import decimals, digits, plus_minus, with_uncertainty
 
-LARGEST = 3
+INDENT = "    "
+LONGEST_NAME = 32
 
 
 def summary_lines(d: Determination) -> list[str]:
-    """Lines of plain text: h, comparison, cutoffs, largest contributions, refusals.
+    """Lines of plain text: h, comparison, checks, what limits it, cutoffs, refusals.
 
     Parameters
     ----------
@@ -31,46 +34,43 @@ def summary_lines(d: Determination) -> list[str]:
         "",
         f"  h = {plus_minus(h.value_J_s, h.expanded_uncertainty_J_s, 'J s').text}",
         f"      U with k = {h.coverage_factor:.2f}, p = {100 * h.coverage_probability:.0f} %; "
-        f"u = {100 * h.relative_standard_uncertainty:.2f} %; "
-        f"{h.route.replace('_', ' ')} route",
+        f"u = {digits(100 * h.relative_standard_uncertainty, 2, '%').text}; "
+        f"route: {ROUTE_WORDS[h.route]}",
         f"  deviation from the SI value {deviation}, E_n = {decimals(comparison.E_n, 2).text}: "
         f"{comparison.verdict}",
         "",
-        "  scan              U / kV   angle / °   cutoff / pm",
+        f"  {limiting_sentence(d.budget)}",
     ]
+    failed = [check for check in d.checks if check.passed is False]
+    # The names of the failed ones follow, each with what it means.
+    lines.append(f"  {checks_in_words(d.checks).partition(': ')[0]}{':' if failed else ''}")
+    lines += [f"{INDENT}{check.name}: {check.meaning}" for check in failed]
+    width = min(LONGEST_NAME, max(len(plain(cutoff.scan)) for cutoff in d.cutoffs))
+    lines += ["", f"  {'scan':{width}s}  voltage / kV  angle / °  cutoff / pm"]
     for cutoff in d.used:
         wavelength = with_uncertainty(cutoff.wavelength_pm, cutoff.standard_uncertainty_pm).text
         lines.append(
-            f"  {_fitting(cutoff.scan)}  {cutoff.tube_voltage_kV:6.2f}   "
-            f"{cutoff.glancing_angle_deg:9.3f}   {wavelength}"
+            f"  {_fitting(cutoff.scan, width)}  {cutoff.tube_voltage_kV:12.2f}  "
+            f"{cutoff.glancing_angle_deg:9.3f}  {wavelength:>11s}"
         )
-    lines += ["", f"  {limiting_sentence(d.budget)}"]
-    lines += [
-        f"    {100 * source.variance_share:5.1f} % of the variance: {source.words}"
-        f" ({'common to all voltages' if source.common else 'independent'})"
-        for source in sources(d.budget)[:LARGEST]
-    ]
-    failed = [check for check in d.checks if check.passed is False]
-    if failed:
-        lines += ["", "  Checks that failed:"]
-        lines += [f"    {check.name}: {check.meaning}" for check in failed]
     if d.refused:
-        lines += ["", "  Not used:"]
-        lines += [f"    {_fitting(cutoff.scan)}  {cutoff.reason}" for cutoff in d.refused]
+        lines += ["", "  Without a cutoff:"]
+        lines += [
+            f"{INDENT}{_fitting(cutoff.scan, width)}  {cutoff.reason}" for cutoff in d.refused
+        ]
     remarks = [*d.run.remarks, *d.angle_scale.remarks]
     if remarks:
         lines += ["", "  Remarks:"]
-        lines += [f"    {remark}" for remark in remarks]
+        lines += [f"{INDENT}{remark(one)}" for one in remarks]
     return [_plain_line(line) for line in lines]
 
 
-def _fitting(name: str) -> str:
+def _fitting(name: str, width: int) -> str:
     text = plain(name)
-    return f"{text[:15]}…" if len(text) > 16 else f"{text:16s}"
+    return f"{text[: width - 1]}…" if len(text) > width else f"{text:{width}s}"
 
 
 def _plain_line(line: str) -> str:
     """Clean a line and leave its indentation and columns alone."""
-    body = line.lstrip(" ")
-    indent = " " * (len(line) - len(body))
-    return indent + "  ".join(plain(part, 500) for part in body.split("  "))
+    parts = re.split(r"( {2,})", line)
+    return "".join(part if part.isspace() else plain(part, 500) for part in parts)
