@@ -5,14 +5,15 @@ from __future__ import annotations
 import math
 from dataclasses import replace
 
+import numpy as np
 import pytest
 from report_fixture import example
 
 from hdetermine.inference import measurement as names
-from hdetermine.records.results import Budget, WindowFit
-from hdetermine.report import rows, rows_budget, rows_routes, rows_scale, rows_source
-from hdetermine.report.plaintext import sentence
-from hdetermine.report.spoken import input_words, scan_of, sources
+from hdetermine.records.results import WindowFit
+from hdetermine.report import rows, rows_routes, rows_scale, rows_source
+from hdetermine.report.plaintext import remark, sentence
+from hdetermine.report.spoken import checks_in_words, input_words, scan_of
 from hdetermine.report.table import (
     Cell,
     decimals,
@@ -110,7 +111,7 @@ def test_cutoffs(d):
 
 
 def test_scans_that_were_never_meant_for_a_cutoff_are_not_called_refused(d):
-    for change, said in (({"edge": False}, "no: for the lines only"),
+    for change, said in (({"edge": False}, "no: serves the lines"),
                          ({"leave_out": "tube was warming up"}, "no: left out")):  # fmt: skip
         scans = (replace(d.run.scans[0], **change), *d.run.scans[1:])
         table = rows.cutoff_rows(replace(d, run=replace(d.run, scans=scans)))
@@ -136,7 +137,10 @@ def test_facts_of_a_scan_show_a_window_of_the_users_own(d):
     fixed = WindowFit(4.0, 6.0, 2, 1, 1, 5.16, 0.012, 20.0, 15, 0.0)
     facts = dict(rows.scan_facts(replace(d.used[0], fixed_window=fixed)))
     assert plain_spaces(facts["your window"].text) == "5.160(12)° from 4.00° to 6.00°"
-    assert "no line modelled" in facts["heaviest of 2 fits"].text
+    assert "the fit of most weight (0.70) of 2" in facts["window"].text
+    assert "no line modelled" in facts["window"].text
+    only = replace(d.used[0], windows=d.used[0].windows[:1])
+    assert "in the only fit" in dict(rows.scan_facts(only))["window"].text
 
 
 def test_refused(d):
@@ -161,10 +165,26 @@ def test_routes(posterior, use):
 
 
 def test_checks_and_backwards(d):
-    assert [cell.text for cell in column(rows.check_rows(d), "outcome")] == [
-        "passed", "failed", "not possible"]  # fmt: skip
+    checks = rows.check_rows(d)
+    assert [cell.text for cell in column(checks, "outcome")] == [
+        "failed", "passed", "not possible"]  # fmt: skip
+    assert [cell.text for cell in column(checks, "figure")] == ["−2.60", "0.40", "–"]
     backwards = rows.backward_rows(d)
     assert backwards.rows[0][1].number == d.read_backwards.voltage_gain
+    # (0.9987 - 1)/sqrt(0.0041^2 + 0.004^2) and (281.6 - d)/sqrt(1.2^2 + 0.02^2)
+    assert column(backwards, "difference / u")[0].number == pytest.approx(-0.227, abs=1e-3)
+    assert "0.13(41) % below the displayed one" in plain_spaces(backwards.note)
+
+
+def test_checks_in_one_sentence(d):
+    assert checks_in_words(d.checks) == (
+        "1 of 2 consistency checks failed and asks for a second look before the result is used: "
+        "exponent."
+    )
+    assert checks_in_words(d.checks[:1]).startswith("The one consistency check")
+    assert checks_in_words(d.checks[2:]) == "No consistency check was possible."
+    both = (d.checks[0], replace(d.checks[1], passed=True))
+    assert checks_in_words(both) == "All 2 consistency checks that the data allow passed."
 
 
 def test_improvements(d):
@@ -174,6 +194,21 @@ def test_improvements(d):
     assert table.rows[0][2].number == pytest.approx(-0.19)
     assert "would stay at" in table.note
     assert rows.improvement_rows(replace(d, improvements=())) is None
+
+
+def test_improvements_are_held_against_the_linear_route(d):
+    """They are figures of the linear route, whichever route is reported."""
+    other = replace(d, h=replace(d.h, route="monte_carlo", expanded_uncertainty_J_s=1e-35))
+    table = rows.improvement_rows(other)
+    assert table.rows[0][2].number == pytest.approx(-0.19)
+    assert "now by the linear route" in table.note
+
+
+def test_inputs_that_would_not_help_are_told_with_a_bound_above_zero(d):
+    small = replace(d.improvements[0], expanded_if_zero=d.budget.expanded_uncertainty * 0.99999)
+    table = rows.improvement_rows(replace(d, improvements=(d.improvements[0], small)))
+    assert len(table.rows) == 1
+    assert "None of the other 1 inputs would lower U by more than 0.1" in table.note
 
 
 def test_figures_behind_the_posterior(d):
@@ -190,8 +225,10 @@ def test_figures_behind_the_posterior(d):
     assert [row[0].text for row in priors.rows] == ["h", "gain of the voltage display"]
     assert priors.rows[1][3].text == "1.0001(39)"
     wider = rows_routes.sensitivity_rows(route)
-    assert [cell.text for cell in wider.rows[0]] == [
-        "all Type B inputs, sampled again", "6.623", "0.11"]  # fmt: skip
+    assert [[cell.text for cell in row] for row in wider.rows] == [
+        ["none: the posterior as it is", "6.622", "0.053"],
+        ["of all Type B inputs, sampled again", "6.623", "0.11"]]  # fmt: skip
+    assert "The other 1 inputs change h by less" in wider.note
     sampling = rows_routes.sampling_rows("posterior", "Posterior", route)
     assert [row[0].text for row in sampling.rows] == [
         "walkers", "steps", "acceptance fraction", "converged"]  # fmt: skip
@@ -203,55 +240,6 @@ def test_a_route_without_figures_makes_no_tables(d):
                  rows_routes.sensitivity_rows):  # fmt: skip
         assert make(bare) is None
         assert make(None) is None
-
-
-# --- budget -----------------------------------------------------------------------------------
-
-
-def test_budget_keeps_common_and_independent_apart(d):
-    table = rows_budget.budget_rows(d.budget)
-    common, independent = table.groups
-    assert len(common.rows) + len(independent.rows) == len(d.budget.rows)
-    assert "96.1" in common.heading
-    assert "3.9" in independent.heading
-    sizes = [abs(row[9].number) for row in common.rows]
-    assert sizes == sorted(sizes, reverse=True)
-
-
-def test_budget_shares_are_those_of_the_record(d):
-    table = rows_budget.budget_rows(d.budget)
-    assert sum(row[10].number for row in table.rows) == pytest.approx(1.0)
-    assert sum(float(row[10].text.replace("−", "-")) for row in table.rows) == pytest.approx(
-        100.0, abs=0.3
-    )
-
-
-def test_budget_marks_defaults_and_correlations(d):
-    table = rows_budget.budget_rows(d.budget)
-    named = {row[0].detail: row[0].text for row in table.rows}
-    assert named["crystal.refraction"].endswith("†")
-    assert named["goniometer.zero_deg"].endswith("‡")
-    assert named["tube.voltage.gain"] == "gain of the voltage display"
-    assert "r = 0.31" in table.note
-
-
-def test_sources_sum_up_by_group(d):
-    found = {one.words: one for one in sources(d.budget)}
-    counting = found["counting statistics"]
-    assert counting.count == len(d.used)
-    assert not counting.common
-    assert sum(one.variance_share for one in found.values()) == pytest.approx(1.0)
-
-
-def test_budget_of_another_measurand():
-    """The rows serve any budget, for instance one without groups or correlation."""
-    one = example().budget
-    row = replace(one.rows[0], quantity="length", group="", sensitivity=2.0)
-    table = rows_budget.budget_rows(
-        Budget("l", "mm", 5.0, 0.0, math.inf, 0.95, 2.0, 0.0, (row,), one.correlation[:1, :1])
-    )
-    assert table.rows[0][0].text == "length"
-    assert table.caption == "Uncertainty budget of l"
 
 
 # --- scale and source -------------------------------------------------------------------------
@@ -278,6 +266,19 @@ def test_scatter_is_told():
     assert shown["Birge ratio without that scatter"] == "1.90"
 
 
+def test_a_trend_along_the_residuals_is_told(d):
+    """Residuals of one sign at low and of the other at high voltage: one change of sign."""
+    relation = d.relation
+    order = np.argsort(relation.voltages_kV)
+    wavelengths = relation.slope_pm_kV / relation.voltages_kV
+    trend = wavelengths.copy()
+    trend[order] *= np.linspace(0.99, 1.01, order.size) + 1e-6
+    assert rows_scale.sign_changes(replace(relation, wavelengths_pm=trend)) == (1, order.size - 1)
+    shown = {row[0].text: row[1].text for row in rows_scale.relation_rows(
+        replace(d, relation=replace(relation, wavelengths_pm=trend))).rows}  # fmt: skip
+    assert shown["changes of sign along the residuals"] == "1 of 8"
+
+
 def test_diagnostics_of_any_kind():
     table = rows_scale.diagnostic_rows(
         "x", "X", {"stable": True, "draws": 250_000, "spread": {"u_J_s": 1.5e-38}, "walls": [1, 2]}
@@ -285,7 +286,7 @@ def test_diagnostics_of_any_kind():
     assert [[plain_spaces(cell.text) for cell in row] for row in table.rows] == [
         ["stable", "yes"],
         ["draws", "250 000"],
-        ["spread: u", "1.500 × 10⁻³⁸ J s"],
+        ["spread: u", "1.50 × 10⁻³⁸ J s"],
         ["walls", "1, 2"],
     ]
     assert rows_scale.diagnostic_rows("x", "X", {}) is None
@@ -296,6 +297,31 @@ def test_provenance(d):
     assert rows_source.version_rows(d).rows[-1][1].number == 1.0
     assert [row[2].text for row in rows_source.sheet_rows(d).rows] == [
         "stated", "stated", "default"]  # fmt: skip
+    assert plain_spaces(rows_source.sheet_rows(d).rows[2][1].text) == (
+        "3.98 × 10⁻⁵ with u = 5 × 10⁻⁷")  # fmt: skip
+    scans = rows_source.scan_rows(d)
+    assert [row[5].number for row in scans.rows] == [one.counts.size for one in d.run.scans]
+    assert scans.rows[0][3].text == "2.50 to 9.00"
+    assert {row[7].text for row in scans.rows} == {"edge and lines"}
+
+
+@pytest.mark.parametrize(
+    ("text", "shown"),
+    [
+        ("0 kV, u = 0.0289 kV, rectangular", "0 kV, u = 0.0289 kV, rectangular"),
+        ("90 us, u = 10 us", "90 µs, u = 10 µs"),
+        ("3.35e-05 1/K, u = 8.66e-07 1/K", "3.35 × 10⁻⁵ K⁻¹, u = 8.66 × 10⁻⁷ K⁻¹"),
+        ("5.345785524e-05, u = 2.67e-06", "5.346 × 10⁻⁵, u = 2.67 × 10⁻⁶"),
+        ("25 degC", "25 °C"),
+        ("0 deg, u = 0.15 deg", "0°, u = 0.15°"),
+        ("-2 kV of bench e5, 7 <b>", "−2 kV of bench e5, 7 <b>"),
+    ],
+)
+def test_run_sheet_is_set_as_the_rest(d, text, shown):
+    """Units and numbers as in the SI brochure, 9th ed. (2019), 5.4.3."""
+    one = replace(d.run.sheet[0], text=text)
+    table = rows_source.sheet_rows(replace(d, run=replace(d.run, sheet=(one,))))
+    assert plain_spaces(table.rows[0][1].text) == shown
 
 
 def test_names_in_words():
@@ -315,6 +341,18 @@ def test_names_in_words():
 )
 def test_true_minus_in_sentences(text, shown):
     assert sentence(text) == shown
+
+
+@pytest.mark.parametrize(
+    ("text", "shown"),
+    [
+        ("counts were restored as rate x dwell", "Counts were restored as rate × dwell."),
+        ("scan_3 is -2 off.", "scan_3 is −2 off."),
+        ("", ""),
+    ],
+)
+def test_remarks_are_sentences(text, shown):
+    assert remark(text) == shown
 
 
 @pytest.mark.parametrize("hostile", ["\x1b]0;x\x07", "a\u202eb", "line\nbreak", "x" * 9000])

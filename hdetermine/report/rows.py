@@ -7,6 +7,7 @@ import math
 import numpy as np
 
 from hdetermine.physics.constants import ELEMENTARY_CHARGE_C, PLANCK_PER_SLOPE
+from hdetermine.records.quantity import Quantity
 from hdetermine.records.results import Cutoff, Determination
 from hdetermine.report.plaintext import sentence
 from hdetermine.report.spoken import ROUTE_WORDS, input_words, scan_of
@@ -44,13 +45,14 @@ def result_rows(d: Determination) -> Table:
         (Cell("coverage probability p"), decimals(100.0 * h.coverage_probability, 1, "%"),
          Cell("that the interval h ± U holds the value")),
         (Cell("effective degrees of freedom"), _freedom(h.effective_degrees_of_freedom),
-         Cell("Welch–Satterthwaite")),
+         Cell("Welch–Satterthwaite" if h.route == "linear"
+              else "Welch–Satterthwaite, of the linear route")),
         (Cell("relative standard uncertainty"),
          digits(100.0 * h.relative_standard_uncertainty, 2, "%"), Cell("u/h")),
         (Cell("relative deviation"), percent(d.comparison.relative_deviation),
          words("from the SI value, which is exact")),
         (Cell("Eₙ"), decimals(d.comparison.E_n, 2),
-         Cell("deviation over U; agreement up to 1 in magnitude")),
+         Cell("deviation over U; from −1 to 1 the result agrees")),
         (Cell("h in electronvolt seconds"),
          with_uncertainty(h.value_J_s / ELEMENTARY_CHARGE_C,
                           h.standard_uncertainty_J_s / ELEMENTARY_CHARGE_C, "eV s"),
@@ -92,7 +94,7 @@ def cutoff_rows(d: Determination) -> Table:
     for cutoff in d.cutoffs:
         name, voltage = words(cutoff.scan), digits(cutoff.tube_voltage_kV, 4)
         if not cutoff.used:
-            why = "for the lines only" if cutoff.scan in for_lines else "refused"
+            why = "serves the lines" if cutoff.scan in for_lines else "refused"
             why = "left out" if cutoff.scan in left_out else why
             rows.append((name, voltage, *([Cell(NONE)] * 6), Cell(f"no: {why}")))
             continue
@@ -118,14 +120,15 @@ def cutoff_rows(d: Determination) -> Table:
     return table(
         "cutoffs",
         "Cutoff of each scan",
-        ("scan", "U / kV", "reading / °", "θ / °", "λₘᵢₙ / pm", "hᵢ / 10⁻³⁴ J s", "shift / u",
-         "deviance / ν", "used"),
+        ("scan", "voltage / kV", "reading / °", "θ / °", "λₘᵢₙ / pm", "hᵢ / 10⁻³⁴ J s",
+         "shift / u", "deviance / ν", "used"),
         rows,
         numeric=(1, 2, 3, 4, 5, 6, 7),
-        note="U: displayed tube voltage. In parentheses: the standard uncertainty, for the reading "
-        "from counting and the choice of fit alone, for the wavelength and for hᵢ, the value from "
-        "this scan alone, from everything. Shift: how far h moves, in units of u(h), when this "
-        "scan is left out. Deviance of the heaviest fit and its degrees of freedom.",
+        note="Voltage: as displayed. Reading: the cutoff on the goniometer; θ: less the zero "
+        "offset. hᵢ: h from this scan alone. In parentheses: the standard uncertainty, of the "
+        "reading from counting and the choice of fit alone, of λₘᵢₙ and hᵢ from everything, much "
+        "of it common to all scans. Shift: how far h moves, in units of u(h), when this scan is "
+        "left out. Deviance of the fit of most weight, and its degrees of freedom ν.",
     )  # fmt: skip
 
 
@@ -146,20 +149,20 @@ def scan_facts(cutoff: Cutoff) -> tuple[tuple[str, Cell], ...]:
          with_uncertainty(cutoff.wavelength_pm, cutoff.standard_uncertainty_pm, "pm")),
         ("deviance", Cell(f"{decimals(cutoff.deviance, 1).text} with "
                           f"{cutoff.degrees_of_freedom} degrees of freedom", cutoff.deviance)),
-        ("shape", words(cutoff.shape)),
     ]  # fmt: skip
     if cutoff.windows:
         heaviest = cutoff.windows[0]
-        lines = heaviest.lines_modelled
+        lines, fits = heaviest.lines_modelled, len(cutoff.windows)
+        which = f"the fit of most weight ({heaviest.weight:.2f}) of {fits}"
         facts.append(
             (
-                "heaviest of " + _counted(len(cutoff.windows), "fit"),
+                "window",
                 Cell(
-                    f"{heaviest.from_deg:.2f}° to {heaviest.to_deg:.2f}°, "
-                    f"{_counted(heaviest.background_terms, 'term')} of background, "
-                    f"{_counted(heaviest.continuum_terms, 'term')} of continuum, "
-                    f"{_counted(lines, 'line') if lines else 'no line'} modelled, "
-                    f"weight {heaviest.weight:.2f}"
+                    f"{heaviest.from_deg:.2f}° to {heaviest.to_deg:.2f}°, in "
+                    f"{which if fits > 1 else 'the only fit'}; "
+                    f"background of {_counted(heaviest.background_terms, 'term')}, "
+                    f"continuum with {_counted(heaviest.continuum_terms, 'smooth term')}, "
+                    f"{_counted(lines, 'line') if lines else 'no line'} modelled"
                 ),
             )
         )
@@ -184,7 +187,7 @@ def refused_rows(d: Determination) -> Table | None:
         (words(cutoff.scan), digits(cutoff.tube_voltage_kV, 4), Cell(sentence(cutoff.reason)))
         for cutoff in d.refused
     ]
-    return table("refused", "Scans without a cutoff", ("scan", "U / kV", "reason"), rows,
+    return table("refused", "Why there is no cutoff", ("scan", "voltage / kV", "reason"), rows,
                  numeric=(1,))  # fmt: skip
 
 
@@ -195,34 +198,63 @@ def backward_rows(d: Determination) -> Table:
     rows = [
         (Cell("gain of the voltage display"),
          with_uncertainty(back.voltage_gain, back.voltage_gain_u),
-         with_uncertainty(gain.value, gain.standard_uncertainty)),
+         with_uncertainty(gain.value, gain.standard_uncertainty),
+         _difference(back.voltage_gain, back.voltage_gain_u, gain)),
         (Cell("spacing of the crystal planes"),
          with_uncertainty(back.spacing_pm, back.spacing_u_pm, "pm"),
-         with_uncertainty(spacing.value, spacing.standard_uncertainty, "pm")),
+         with_uncertainty(spacing.value, spacing.standard_uncertainty, "pm"),
+         _difference(back.spacing_pm, back.spacing_u_pm, spacing)),
     ]  # fmt: skip
-    return table("backwards", "Implied and stated values",
-                 ("quantity", "implied by this run with h exact", "stated in the run sheet"), rows,
-                 numeric=(1, 2))  # fmt: skip
+    off = 100.0 * (back.voltage_gain - 1.0)
+    percent_off = with_uncertainty(abs(off), 100.0 * back.voltage_gain_u, "%").text
+    side = "above" if off >= 0.0 else "below"
+    return table(
+        "backwards",
+        "Implied and stated values",
+        ("quantity", "implied by this run with h exact", "stated in the run sheet",
+         "difference / u"),
+        rows,
+        numeric=(1, 2, 3),
+        note=f"The implied gain puts the true voltage {percent_off} {side} the displayed one. In "
+        "parentheses: for implied values the standard uncertainty from all other inputs. "
+        "Difference: implied less stated, over its standard uncertainty.",
+    )  # fmt: skip
+
+
+def _difference(implied: float, implied_u: float, stated: Quantity) -> Cell:
+    u = math.hypot(implied_u, stated.standard_uncertainty)
+    return decimals((implied - stated.value) / u if u > 0.0 else math.nan, 1, signed=True)
 
 
 def check_rows(d: Determination) -> Table:
-    """Consistency checks, each with figure, limit and meaning."""
+    """Consistency checks, the failed ones first, each with figure, limit and meaning."""
     state = {True: "passed", False: "failed", None: "not possible"}
     rows = [
-        (words(check.name), Cell(state[check.passed]), digits(check.figure, 3),
-         digits(check.limit, 3), Cell(sentence(check.meaning)))
-        for check in d.checks
+        (words(check.name, check.measure), Cell(state[check.passed]), decimals(check.figure, 2),
+         decimals(check.limit, 2), Cell(sentence(check.meaning)))
+        for check in sorted(d.checks, key=lambda check: check.passed is not False)
     ]  # fmt: skip
-    headings = ("check", "outcome", "figure", "limit", "meaning")
-    caption = "Figure, limit and meaning of each check"
-    return table("checks", caption, headings, rows, numeric=(2, 3))
+    return table(
+        "checks",
+        "Figure, limit and meaning of each check",
+        ("check", "outcome", "figure", "limit", "meaning"),
+        rows,
+        numeric=(2, 3),
+        note="Small print: what the figure is; a limit holds for its magnitude. About 99 % of "
+        "sound runs keep each of the limits that come from a normal or a chi-square distribution. "
+        "For the routes, the difference is that of h from the linear route in units of its u, or "
+        "that of u as a part of it.",
+    )
 
 
 def improvement_rows(d: Determination) -> Table | None:
-    """What U would remain if an input were better known; None without such figures."""
+    """What U would remain if an input were better known; None without such figures.
+
+    The figures are of the linear route, and so is the U that they are compared with.
+    """
     if not d.improvements:
         return None
-    whole = d.h.expanded_uncertainty_J_s
+    whole = d.budget.expanded_uncertainty
     gains = [1.0 - one.expanded_if_zero / whole for one in d.improvements]
     shown = sum(gain >= LEAST_GAIN for gain in gains[:MOST_IMPROVEMENTS]) or 1
     rows = []
@@ -238,14 +270,17 @@ def improvement_rows(d: Determination) -> Table | None:
                 percent(one.expanded_if_zero / whole - 1.0, 1),
             )
         )
+    route = "" if d.h.route == "linear" else " by the linear route"
     note = (
-        f"U is {digits(whole, 2, 'J s').text} now; with perfect counting statistics it would "
-        f"stay at {digits(d.counting_floor_J_s, 2, 'J s').text}."
+        f"U is {digits(whole, 2, 'J s').text} now{route}; with perfect counting statistics it "
+        f"would stay at {digits(d.counting_floor_J_s, 2, 'J s').text}. The weights of the scans "
+        "are worked out anew for every row."
     )
     if len(gains) > shown:
-        rest = 100.0 * max(0.0, *gains[shown:])
+        # Rounded up: "less than 0.0 %" would say nothing.
+        rest = math.ceil(1e3 * max(LEAST_GAIN / 2.0, *gains[shown:])) / 10.0
         note += (
-            f" None of the other {len(gains) - shown} entries would lower U by more than "
+            f" None of the other {len(gains) - shown} inputs would lower U by more than "
             f"{decimals(rest, 1, '%').text}."
         )
     return table(

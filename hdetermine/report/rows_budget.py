@@ -8,8 +8,9 @@ import numpy as np
 
 from hdetermine.records.results import Budget, BudgetRow
 from hdetermine.report.rounding import power_of_ten, typeset_figure
-from hdetermine.report.spoken import input_words, scan_of
+from hdetermine.report.spoken import input_words, scan_of, sources
 from hdetermine.report.table import (
+    NONE,
     Cell,
     Column,
     Group,
@@ -18,10 +19,16 @@ from hdetermine.report.table import (
     digits,
     spelled,
     symbol,
+    table,
     with_uncertainty,
+    words,
 )
 
 LEAST_CORRELATION = 0.005
+SMALLEST_SHARE = 5e-4
+"""Sources below it share a line."""
+TELLING_CORRELATION = 0.05
+"""From this size on a correlation can move a share by a visible amount."""
 DEFAULT_MARK = "†"
 CORRELATED_MARK = "‡"
 COLUMNS = (
@@ -39,6 +46,119 @@ COLUMNS = (
 )
 
 
+def source_rows(budget: Budget) -> Table:
+    """Sum the budget up: one row a source, the largest share first, and the whole at the foot."""
+    exponent = _exponent(budget.combined_standard_uncertainty)
+    unit = 10.0**exponent
+
+    def part(share: float) -> Cell:
+        if share < 0.0:
+            return Cell(NONE)
+        size = math.sqrt(share) * budget.combined_standard_uncertainty
+        return Cell(_two_digits_plain(size / unit), size)
+
+    every = sources(budget)
+    shown = [source for source in every if abs(source.variance_share) >= SMALLEST_SHARE]
+    rows = [
+        (
+            words(source.words),
+            words(_inputs_of(source.words, source.common, budget)),
+            Cell("common to all scans" if source.common else "each scan its own"),
+            part(source.variance_share),
+            Cell(decimals(100.0 * source.variance_share, 2).text, source.variance_share),
+        )
+        for source in shown
+    ]
+    small = [source for source in every if source not in shown]
+    if small:
+        rest = sum(source.variance_share for source in small)
+        rows.append(
+            (Cell("all others"), words(", ".join(source.words for source in small)), Cell(NONE),
+             part(rest), Cell(decimals(100.0 * rest, 2).text, rest))
+        )  # fmt: skip
+    rows.append(
+        (Cell("all together"), Cell(f"{len(budget.rows)} inputs"), Cell(""), part(1.0),
+         Cell(decimals(100.0, 2).text, 1.0))
+    )  # fmt: skip
+    return table(
+        "sources",
+        f"Budget of {budget.measurand} by source",
+        ("source", "inputs", "voltages", _power_heading("part of u", exponent, budget.unit),
+         "share / %"),
+        rows,
+        numeric=(3, 4),
+        note="Share: of the variance u². Part of u: its root, so that the squares of the parts sum "
+        "to that of u; none where correlations make a share negative.",
+    )  # fmt: skip
+
+
+def _inputs_of(source: str, common: bool, budget: Budget) -> str:
+    """Symbols of the inputs behind a source; for inputs of single scans, of how many."""
+    rows = [
+        row
+        for row in budget.rows
+        if (row.group or input_words(row.quantity)) == source and row.common is common
+    ]
+    signs = ", ".join(dict.fromkeys(_sign(row) for row in rows))
+    return signs if common or len(rows) == 1 else f"{signs} of {len(rows)} scans"
+
+
+def correlated_rows(budget: Budget) -> Table | None:
+    """Inputs whose shares mean something together only; None if none are correlated."""
+    rows = []
+    for members in correlated_sets(budget):
+        named = [budget.rows[i] for i in members]
+        matrix = np.triu(budget.correlation[np.ix_(members, members)], 1)
+        pairs = [
+            f"r({_sign(named[i])}, {_sign(named[j])}) = {decimals(float(matrix[i, j]), 2).text}"
+            for i, j in zip(*np.nonzero(np.abs(matrix) >= TELLING_CORRELATION), strict=True)
+        ]
+        shares = [decimals(100.0 * row.variance_share, 2).text for row in named]
+        together = sum(row.variance_share for row in named)
+        rows.append(
+            (
+                words("; ".join(f"{_full_words(row.quantity)} ({_sign(row)})" for row in named)),
+                Cell("; ".join(pairs)),
+                Cell(", ".join(shares)),
+                Cell(decimals(100.0 * together, 2).text, together),
+            )
+        )
+    if not rows:
+        return None
+    return table(
+        "correlated",
+        "Correlated inputs: their shares belong together",
+        ("inputs", "correlation", "shares / %", "together / %"),
+        rows,
+        numeric=(3,),
+        note="A fit that finds several inputs at once leaves them correlated: where one errs, so "
+        "does the other. Their contributions then reinforce or cancel each other, so that a share "
+        "by itself may be large or negative; what counts is the sum of the set.",
+    )
+
+
+def correlated_sets(budget: Budget) -> tuple[tuple[int, ...], ...]:
+    """Places of inputs that are linked by telling correlations, each set once."""
+    linked = np.abs(budget.correlation) >= TELLING_CORRELATION
+    left = set(np.flatnonzero(linked.sum(axis=1) > 1).tolist())
+    found = []
+    while left:
+        members, edge = set(), {min(left)}
+        while edge:
+            members |= edge
+            edge = {j for i in edge for j in np.flatnonzero(linked[i]).tolist()} - members
+        left -= members
+        found.append(tuple(sorted(members)))
+    return tuple(found)
+
+
+def _sign(row: BudgetRow) -> str:
+    """Symbol of an input within a line of text."""
+    one = symbol(row.symbol)
+    below = one.subscript.translate(str.maketrans("0123456789", "₀₁₂₃₄₅₆₇₈₉"))
+    return one.text + (below if not below.isascii() else f"_{below}" if below else "")
+
+
 def budget_rows(budget: Budget) -> Table:
     """Set the budget: every input with its signed sensitivity, contribution and share."""
     groups = []
@@ -53,13 +173,12 @@ def budget_rows(budget: Budget) -> Table:
         share = sum(row.variance_share for row in rows)
         title = f"{heading} (together {decimals(100.0 * share, 1, '%').text} of the variance)"
         groups.append(Group(title, tuple(_row(row, budget, exponent) for row in rows)))
-    unit = spelled(budget.unit)
     return Table(
         "budget",
         f"Uncertainty budget of {budget.measurand}",
         (
             *COLUMNS[:-2],
-            Column(_contribution_heading(exponent, unit), True),
+            Column(_power_heading("contribution", exponent, budget.unit), True),
             COLUMNS[-1],
         ),
         tuple(groups),
@@ -67,9 +186,9 @@ def budget_rows(budget: Budget) -> Table:
     )
 
 
-def _contribution_heading(exponent: int, unit: str) -> str:
+def _power_heading(name: str, exponent: int, unit: str) -> str:
     power = power_of_ten(exponent).replace(" × ", "")
-    return f"contribution /\N{NO-BREAK SPACE}{power}\N{NO-BREAK SPACE}{unit}"
+    return f"{name} /\N{NO-BREAK SPACE}{power}\N{NO-BREAK SPACE}{spelled(unit)}"
 
 
 def _exponent(number: float) -> int:
@@ -142,18 +261,24 @@ def _note(budget: Budget) -> str:
         parts.append(f"{DEFAULT_MARK} A documented default, not stated in the run sheet.")
     pairs = correlated_pairs(budget)
     if pairs:
-        listed = "; ".join(f"{one} with {two}: {r}" for one, two, r in pairs)
-        parts.append(f"{CORRELATED_MARK} Correlated: {listed}.")
+        listed = "; ".join(f"r({one}, {two}) = {r}" for one, two, r in pairs)
+        parts.append(f"{CORRELATED_MARK} Correlated: {listed}{_and_less(budget)}.")
     return " ".join(parts)
 
 
+def _and_less(budget: Budget) -> str:
+    size = np.abs(np.triu(budget.correlation, 1))
+    weak = (size >= LEAST_CORRELATION) & (size < TELLING_CORRELATION)
+    return "; others below 0.05 in magnitude" if bool(weak.any()) else ""
+
+
 def correlated_pairs(budget: Budget) -> tuple[tuple[str, str, str], ...]:
-    """Pairs of inputs that are correlated: two names in words, and r."""
+    """Pairs of inputs that are correlated enough to tell: two symbols, and r."""
     found = []
     matrix = budget.correlation
-    for i, j in zip(*np.nonzero(np.triu(np.abs(matrix), 1) >= LEAST_CORRELATION), strict=True):
-        one, two = (_full_words(budget.rows[int(k)].quantity) for k in (i, j))
-        found.append((one, two, f"r = {decimals(float(matrix[i, j]), 2).text}"))
+    for i, j in zip(*np.nonzero(np.triu(np.abs(matrix), 1) >= TELLING_CORRELATION), strict=True):
+        one, two = (_sign(budget.rows[int(k)]) for k in (i, j))
+        found.append((one, two, decimals(float(matrix[i, j]), 2).text))
     return tuple(found)
 
 

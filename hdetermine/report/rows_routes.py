@@ -72,13 +72,19 @@ def monte_carlo_rows(route: Route | None) -> Table | None:
         (Cell("stable to two digits"), Cell("yes" if stable else "no"),
          Cell("JCGM 101:2008, clause 7.9")),
     ]  # fmt: skip
-    for key, name in (("symmetric_interval_J_s", "probabilistically symmetric"),
-                      ("shortest_interval_J_s", "shortest")):  # fmt: skip
+    for key, name, remark in (
+        (
+            "symmetric_interval_J_s",
+            "probabilistically symmetric",
+            "2.5 % of the draws on either side",
+        ),
+        ("shortest_interval_J_s", "shortest", "the narrowest that holds 95 % of the draws"),
+    ):
         ends = _sequence(found.get(key))
         if len(ends) == 2:
             cell = interval((_number(ends[0]), _number(ends[1])),
                             route.standard_uncertainty_J_s, -34)  # fmt: skip
-            rows.append((Cell(f"{name} interval / 10⁻³⁴ J s"), cell, Cell(NONE)))
+            rows.append((Cell(f"{name} interval / 10⁻³⁴ J s"), cell, Cell(remark)))
     validation = _mapping(found.get("validation"))
     if validation:
         passed = "passed" if validation.get("passed") else "failed"
@@ -136,7 +142,7 @@ def _limits(limits: Figures) -> str:
         "split_rhat": "split R-hat of at most {}",
     }
     parts = [
-        text.format(digits(_number(limits[key]), 3).text)
+        text.format(grouped(f"{_number(limits[key]):g}"))
         for key, text in said.items()
         if key in limits
     ]
@@ -175,35 +181,54 @@ def prior_rows(route: Route | None) -> Table | None:
 
 
 def sensitivity_rows(route: Route | None) -> Table | None:
-    """How h and U answer to priors twice as wide."""
+    """How h and U answer to priors twice as wide, below h and U as they are."""
     if route is None:
         return None
     found = _mapping(route.diagnostics.get("prior_sensitivity"))
-    rows = []
     together = _mapping(found.get("all_doubled"))
+    each = [_mapping(one) for one in _sequence(found.get("each_doubled_linear"))]
+    if not together and not each:
+        return None
+    low, high = route.interval_95_J_s
+    u = route.standard_uncertainty_J_s
+    as_it_is = {"value_J_s": route.value_J_s, "expanded_uncertainty_J_s": 0.5 * (high - low)}
+    rows = [_doubled("none: the posterior as it is", as_it_is, u)]
     if together:
-        rows.append(_doubled("all Type B inputs, sampled again", together))
-    for one in _sequence(found.get("each_doubled_linear")):
-        entry = _mapping(one)
+        rows.append(_doubled("of all Type B inputs, sampled again", together, u))
+    # A wider prior of an input that does not matter leaves U where it is.
+    least = min((_number(entry.get("expanded_uncertainty_J_s")) for entry in each), default=0.0)
+    telling = [entry for entry in each if _tells(entry, route.value_J_s, u, least)]
+    for entry in telling:
         name = str(entry.get("quantity", ""))
         scan = scan_of(name)
-        rows.append(_doubled(input_words(name) + (f", {scan}" if scan else ""), entry))
-    if not rows:
-        return None
+        rows.append(_doubled(input_words(name) + (f", {scan}" if scan else ""), entry, u))
+    note = (
+        "One input at a time: to first order, without sampling again. U: half the 95 % interval "
+        "where the posterior was sampled, k u elsewhere."
+    )
+    silent = len(each) - len(telling)
+    if silent:
+        note += f" The other {silent} inputs change h by less than 0.05 u and U by less than 1 %."
     return table(
         "sensitivity",
-        "Prior sensitivity: h with half-widths doubled",
-        ("doubled", "h / 10⁻³⁴ J s", "U / 10⁻³⁴ J s"),
+        "Prior sensitivity: h with a prior twice as wide",
+        ("prior made twice as wide", "h / 10⁻³⁴ J s", "U / 10⁻³⁴ J s"),
         rows,
         numeric=(1, 2),
-        note="One input at a time: to first order, without sampling again.",
+        note=note,
     )
 
 
-def _doubled(name: str, entry: Figures) -> tuple[Cell, ...]:
+def _tells(entry: Figures, value: float, u: float, least: float) -> bool:
+    """Whether a prior twice as wide moves h or U by an amount worth a row."""
+    shift = abs(_number(entry.get("value_J_s")) - value)
+    return shift >= 0.05 * u or _number(entry.get("expanded_uncertainty_J_s")) >= 1.01 * least
+
+
+def _doubled(name: str, entry: Figures, standard_uncertainty: float) -> tuple[Cell, ...]:
     value, expanded = (_number(entry.get(key)) for key in ("value_J_s", "expanded_uncertainty_J_s"))
-    # Half of U: the place is that of the standard uncertainty.
-    shown = in_units(value, expanded / 2.0, -34)
+    # One place in the whole column, that of h as it is.
+    shown = in_units(value, standard_uncertainty, -34)
     return (
         words(name),
         Cell(shown.text.partition("(")[0], value),

@@ -5,6 +5,8 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator, Mapping
 
+import numpy as np
+
 from hdetermine.records.results import Determination, Relation
 from hdetermine.report.rounding import grouped
 from hdetermine.report.spoken import input_words
@@ -20,11 +22,18 @@ from hdetermine.report.table import (
     words,
 )
 
+FEWEST_CHANGES = 5
+"""With fewer places for a change of sign their number tells nothing."""
 KEY_UNITS = {"J_s": "J s", "deg": "deg", "pm": "pm", "keV": "keV", "eV": "eV", "kV": "kV", "s": "s"}
 FROM_WORDS = {
     "lines": "characteristic lines",
     "prior": "the run sheet",
+    "run sheet": "the run sheet",
     "edges": "the edges themselves",
+    "edges, against the lines": "the edges, which the lines contradict",
+    "lines, spacing as stated": "characteristic lines, with the spacing as stated",
+    "lines, spacing fitted too": "characteristic lines, the spacing fitted with it",
+    "run sheet and edges": "the run sheet and the edges",
 }
 
 
@@ -48,12 +57,12 @@ def scale_rows(d: Determination) -> Table:
         rows.append(
             (Cell("spacing, fitted with the zero"),
              with_uncertainty(scale.free_spacing_pm, scale.free_spacing_u_pm, "pm"),
-             Cell(f"stated: {text}"))
+             Cell(f"lines alone, without the stated {text}"))
         )  # fmt: skip
     if scale.edge_resolution_deg is not None and scale.edge_resolution_u_deg is not None:
         pull = decimals(scale.edge_pull, 1, signed=True).text
         rows.append(
-            (Cell("resolution that the edges ask for"),
+            (Cell("resolution from the edges alone"),
              with_uncertainty(scale.edge_resolution_deg, scale.edge_resolution_u_deg, "deg"),
              Cell(f"{pull} standard uncertainties from that of the lines"))
         )  # fmt: skip
@@ -80,7 +89,9 @@ def line_rows(d: Determination) -> Table | None:
         ("scan", "line", "order", "λ / pm", "reading / °", "expected / °", "residual / °", "used"),
         rows,
         numeric=(2, 3, 4, 5, 6),
-        note="Wavelengths: NIST Standard Reference Database 128 (Deslattes and others 2003).",
+        note="K-L2,3 is the unresolved Kα doublet, K-M2,3 the Kβ line; n: order of reflection. "
+        "Wavelengths: NIST Standard Reference Database 128 (Deslattes and others 2003); they, "
+        "readings and expectations are those of the strongest component.",
     )
 
 
@@ -90,13 +101,14 @@ def relation_rows(d: Determination) -> Table:
     rows = [
         (Cell("slope through the origin"),
          with_uncertainty(relation.slope_pm_kV, relation.slope_u_pm_kV, "pm kV"),
-         Cell("h c / e")),
+         Cell("hc/e")),
     ]  # fmt: skip
     if math.isfinite(relation.intercept_pm):
         rows += [
             (Cell("slope with a free intercept"),
              with_uncertainty(relation.free_slope_pm_kV,
-                              math.sqrt(relation.free_covariance[0, 0]), "pm kV"), Cell(NONE)),
+                              math.sqrt(relation.free_covariance[0, 0]), "pm kV"),
+             Cell("for comparison")),
             (Cell("free intercept"),
              with_uncertainty(relation.intercept_pm,
                               math.sqrt(relation.free_covariance[1, 1]), "pm"),
@@ -114,18 +126,35 @@ def relation_rows(d: Determination) -> Table:
             (Cell("Birge ratio"), decimals(relation.birge_ratio, 2),
              Cell("√(χ²/ν), 1 expected")),
         ]  # fmt: skip
+    changes, most = sign_changes(relation)
+    if most >= FEWEST_CHANGES:
+        rows.append((Cell("changes of sign along the residuals"), Cell(f"{changes} of {most}"),
+                     Cell("about half, if random")))  # fmt: skip
     if relation.scatter_deg > 0.0:
         rows.append((Cell("scatter between scans beyond all other inputs"),
                      digits(relation.scatter_deg, 2, "deg"),
-                     Cell("added to every cutoff")))  # fmt: skip
+                     Cell("added to every cutoff, as random")))  # fmt: skip
         if math.isfinite(relation.stated_birge_ratio):
             rows.append((Cell("Birge ratio without that scatter"),
-                         decimals(relation.stated_birge_ratio, 2), Cell(NONE)))  # fmt: skip
+                         decimals(relation.stated_birge_ratio, 2),
+                         Cell("why it was added")))  # fmt: skip
     if relation.repeat_u_relative is not None:
-        rows.append((Cell("repeatability, from repeated scans"),
-                     digits(100.0 * relation.repeat_u_relative, 2, "%"), Cell(NONE)))  # fmt: skip
+        rows.append((Cell("spread of hᵢ in repeated scans"),
+                     digits(100.0 * relation.repeat_u_relative, 2, "%"),
+                     Cell("standard deviation")))  # fmt: skip
     return table("relation", "Slope, intercept and exponent", ("quantity", "value", "remark"), rows,
                  numeric=(1,))  # fmt: skip
+
+
+def sign_changes(relation: Relation) -> tuple[int, int]:
+    """Count how often the residuals change sign along the voltage, and how often they could.
+
+    Few changes are the mark of a trend, which chi-square does not see.
+    """
+    order = np.argsort(relation.voltages_kV, kind="stable")
+    residual = relation.wavelengths_pm - relation.slope_pm_kV / relation.voltages_kV
+    signs = np.sign(residual[order])
+    return int(np.sum(signs[1:] != signs[:-1])), max(int(signs.size) - 1, 0)
 
 
 def diagnostic_rows(name: str, caption: str, figures: Mapping[str, object]) -> Table | None:
@@ -164,7 +193,7 @@ def _spoken(value: object) -> str:
     if isinstance(value, bool):
         return "yes" if value else "no"
     if isinstance(value, float):
-        return digits(value, 4).text
+        return digits(value, 3).text
     if isinstance(value, int):
         return grouped(f"{value}")
     if isinstance(value, (list, tuple)):
