@@ -11,6 +11,8 @@ from hdetermine.report.spoken import ROUTE_WORDS, sources
 
 LEAST_SHARE = 0.001
 MOST_BARS = 12
+LETTER = 0.016
+"""Width of a letter of a label, of the width of the axes."""
 _ROUTE_MARKS = {"linear": ("o", BLUE), "monte_carlo": ("s", ORANGE), "posterior": ("D", GREEN)}
 
 
@@ -31,7 +33,8 @@ def budget_picture(d: Determination) -> Picture:
         axes.barh(i, share, 0.42, facecolor=colour if one.common else "none", edgecolor=colour,
                   hatch=hatch, linewidth=1.0)  # fmt: skip
         name = one.words if one.common or one.count == 1 else f"{one.words}, {one.count} scans"
-        axes.text(0.0, i - 0.27, name, ha="left", va="bottom", fontsize=9.5)
+        axes.annotate(name, (0.0, i - 0.27), (3.0, 0.0), textcoords="offset points", ha="left",
+                      va="bottom", fontsize=9.5)  # fmt: skip
         axes.text(max(share, 0.0) + 1.2 * longest, i, f"{share:.1f} %".replace("-", "−"),
                   ha="left", va="center", fontsize=9.5)  # fmt: skip
     axes.axvline(0.0, color=MUTED, linewidth=0.8)
@@ -70,6 +73,7 @@ def routes_picture(d: Determination) -> Picture:
     axes.axvspan(low * scale, high * scale, facecolor=SHADE, linewidth=0)
     axes.axvline(d.comparison.reference_J_s * scale, color=PURPLE, linewidth=1.3,
                  linestyle=(0, (1.2, 1.2)))  # fmt: skip
+    labels: list[tuple[int, float, float, str]] = []
     for i, route in enumerate(routes):
         marker, colour = _ROUTE_MARKS[route.name]
         first, last = (end * scale for end in route.interval_95_J_s)
@@ -83,7 +87,13 @@ def routes_picture(d: Determination) -> Picture:
             words += " (reported)"
         elif not route.usable:
             words += " (not usable)"
-        axes.text(first, i - 0.2, words, ha="left", va="bottom", fontsize=9.5)
+        labels.append((i, first, last, words))
+    for i, first, last, words in labels:
+        # At the other end where the line of the SI value would run through it.
+        reach = len(words) * LETTER * (axes.get_xlim()[1] - axes.get_xlim()[0])
+        crossed = first < d.comparison.reference_J_s * scale < first + reach
+        axes.text(last if crossed else first, i - 0.2, words, ha="right" if crossed else "left",
+                  va="bottom", fontsize=9.5)  # fmt: skip
     axes.set_ylim(len(routes) - 0.5, -0.75)
     axes.set_yticks([])
     axes.spines["left"].set_visible(False)
@@ -103,7 +113,7 @@ def routes_picture(d: Determination) -> Picture:
         f"{d.comparison.reference_J_s * scale:.5f}, is marked."
     )
     caption = (
-        "h by each route with its 95 % interval; dotted: the SI value, which is exact; ground: "
+        "h by each route with its 95 % interval; dotted: the SI value, which is exact; shaded: "
         "the interval of the linear route. A route drawn hollow and broken is not usable."
     )
     return picture(figure, "routes", alt, caption)

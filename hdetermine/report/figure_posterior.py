@@ -43,7 +43,7 @@ def _distribution(d: Determination, chain: NDArray[np.float64]) -> Picture:
     few_ticks(axes)
     axes.set_ylim(bottom=0.0)
     axes.set_xlabel("h / 10⁻³⁴ J s")
-    axes.set_ylabel("density / (10³⁴ / J s)")
+    axes.set_ylabel("density / (10³⁴ J⁻¹ s⁻¹)")
     below(figure, axes, 3)
     low, high = route.interval_95_J_s
     alt = (

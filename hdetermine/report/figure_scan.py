@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 
 import numpy as np
 from matplotlib.axes import Axes
 from numpy.typing import NDArray
 
 from hdetermine.physics.counting import garwood_interval
-from hdetermine.records.results import Cutoff, FittedCurve
+from hdetermine.records.results import Cutoff, FittedCurve, LineMeasure
 from hdetermine.records.scan import Scan
 from hdetermine.report.figure_style import (
     BAND,
@@ -82,7 +83,9 @@ def cutoff_band_deg(cutoff: Cutoff) -> tuple[float, float]:
     return cutoff.reading_deg - sides[0], cutoff.reading_deg + sides[1]
 
 
-def scan_pictures(scan: Scan, cutoff: Cutoff, number: int) -> tuple[Picture, ...]:
+def scan_pictures(
+    scan: Scan, cutoff: Cutoff, number: int, lines: Sequence[LineMeasure] = ()
+) -> tuple[Picture, ...]:
     """Draw one scan: the whole of it and, where a cutoff was found, its edge.
 
     Parameters
@@ -93,8 +96,11 @@ def scan_pictures(scan: Scan, cutoff: Cutoff, number: int) -> tuple[Picture, ...
         What the edge fit made of it, refusals included.
     number : int
         Place in the run, from 1; it names the figure.
+    lines : sequence of LineMeasure
+        Lines of the run; those of this scan that serve the angle scale are marked.
     """
-    whole = _whole(scan, cutoff, number)
+    own = [line for line in lines if line.scan == scan.name and line.used]
+    whole = _whole(scan, cutoff, number, own)
     if not cutoff.used or cutoff.curve is None:
         return (whole,)
     return whole, _edge(scan, cutoff, cutoff.curve, number)
@@ -133,7 +139,22 @@ def _marks(axes: Axes, cutoff: Cutoff) -> None:
                  label="cutoff")  # fmt: skip
 
 
-def _whole(scan: Scan, cutoff: Cutoff, number: int) -> Picture:
+def _line_marks(axes: Axes, lines: Sequence[LineMeasure]) -> None:
+    """Mark lines at the top, their names by turns at two heights."""
+    first, last = axes.get_xlim()
+    for i, line in enumerate(sorted(lines, key=lambda line: line.reading_deg)):
+        height = (0.985, 0.915)[i % 2]
+        above = axes.get_xaxis_transform()
+        axes.plot([line.reading_deg], [height - 0.03], "v", color=INK, markersize=3.5,
+                  transform=above, clip_on=False)  # fmt: skip
+        name = plain(line.label, 30).partition(" ")[2] or plain(line.label, 30)
+        right = line.reading_deg > first + 0.8 * (last - first)
+        axes.annotate(name, (line.reading_deg, height - 0.03), (-5.0 if right else 5.0, 0.0),
+                      xycoords=above, textcoords="offset points", va="center",
+                      ha="right" if right else "left", fontsize=8.5)  # fmt: skip
+
+
+def _whole(scan: Scan, cutoff: Cutoff, number: int, lines: Sequence[LineMeasure]) -> Picture:
     figure = canvas(HEIGHT, bottom=58.0)
     axes = figure.subplots()
     counts = scan.counts.astype(float)
@@ -143,8 +164,9 @@ def _whole(scan: Scan, cutoff: Cutoff, number: int) -> Picture:
     if cutoff.used and cutoff.curve is not None:
         _fit(axes, cutoff.curve, floor=0.6)
     few_ticks(axes)
-    log_counts(axes, float(counts.max(initial=1.0)))
+    log_counts(axes, float(counts.max(initial=1.0)), 6.0 if lines else 2.0)
     axes.set_xlim(float(scan.reading_deg[0]), float(scan.reading_deg[-1]))
+    _line_marks(axes, lines)
     axes.set_xlabel("glancing angle as read / °")
     axes.set_ylabel("counts (log)")
     axes.set_title(f"whole scan, {scan.tube_voltage_kV:g} kV")
@@ -162,6 +184,14 @@ def _whole(scan: Scan, cutoff: Cutoff, number: int) -> Picture:
         if cutoff.used
         else "No cutoff was taken from it."
     )
+    if lines:
+        alt += (
+            " Marked on top: "
+            + ", ".join(
+                f"{plain(line.label, 30)} at {line.reading_deg:.2f} degrees" for line in lines
+            )
+            + "."
+        )
     return picture(figure, f"scan-{number}-whole", alt, MARKS)
 
 

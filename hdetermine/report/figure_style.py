@@ -93,7 +93,7 @@ STYLE: Any = {
 }
 
 
-def canvas(height: float, *, left: float = 62.0, right: float = 8.0, top: float = 20.0,
+def canvas(height: float, *, left: float = 62.0, right: float = 16.0, top: float = 20.0,
            bottom: float = 42.0, width: float = WIDTH) -> Figure:  # fmt: skip
     """Return an empty figure with fixed margins, all lengths in points."""
     figure = Figure(figsize=(width / 72.0, height / 72.0), dpi=72)
@@ -112,10 +112,10 @@ def few_ticks(axes: Axes, *, x: int = 6, y: int = 5) -> None:
     axes.yaxis.set_major_locator(MaxNLocator(y, steps=[1, 2, 2.5, 5, 10]))
 
 
-def log_counts(axes: Axes, largest: float) -> None:
+def log_counts(axes: Axes, largest: float, headroom: float = 2.0) -> None:
     """Make the ordinate logarithmic in counts, from below one to above the largest."""
     axes.set_yscale("log")
-    axes.set_ylim(0.5, max(20.0, 2.0 * largest))
+    axes.set_ylim(0.5, max(20.0, headroom * largest))
     axes.yaxis.set_major_locator(LogLocator(10.0, numticks=8))
     axes.yaxis.set_minor_locator(NullLocator())
     axes.yaxis.set_major_formatter(FuncFormatter(power_of_ten))
@@ -132,4 +132,5 @@ def power_of_ten(value: float, _position: int = 0) -> str:
 def below(figure: Figure, axes: Axes, columns: int) -> None:
     """Put the legend of one axes into a row at the foot of the figure."""
     handles, labels = axes.get_legend_handles_labels()
-    figure.legend(handles, labels, loc="lower left", ncols=columns, bbox_to_anchor=(0.02, 0.005))
+    figure.legend(handles, labels, loc="lower left", ncols=columns, bbox_to_anchor=(0.02, 0.005),
+                  markerscale=1.6)  # fmt: skip

@@ -68,7 +68,7 @@ def draw_figures(d: Determination, *, brief: bool = False) -> Figures:
             ()
             if brief
             else tuple(
-                scan_pictures(scan, cutoffs[scan.name], number)
+                scan_pictures(scan, cutoffs[scan.name], number, d.angle_scale.lines)
                 for number, scan in enumerate(d.run.scans, start=1)
                 if scan.name in cutoffs
             ),
