@@ -13,6 +13,7 @@ import pytest
 from report_fixture import example
 
 from hdetermine.errors import InputError
+from hdetermine.report.document import report_document
 from hdetermine.report.pdf import render_pdf, replaced, run_date
 
 FEW = (25.0, 30.0)
@@ -131,7 +132,7 @@ def test_bookmarks(pdf):
     order = ["Result", "Inverse relation", "Cutoffs", "Uncertainty budget",
              "Three routes to the uncertainty", "Scans", "Angle scale", "Posterior",
              "Consistency checks", "The result read backwards", "What to improve",
-             "Refused scans", "Method in short", "Cautions", "Provenance"]  # fmt: skip
+             "Scans without a cutoff", "Method in short", "Cautions", "Provenance"]  # fmt: skip
     assert [title for title in found if title in order] == order
     assert sum(title.startswith("scan_") for title in found) == 10
 
@@ -149,12 +150,24 @@ def test_text(text):
         assert words in text
 
 
-def test_page_numbers_and_repeated_headers(pdf):
+def test_page_numbers(pdf):
     pages = [re.sub(r"\s+", " ", page.extract_text()) for page in pdf.pages]
     assert 8 <= len(pages) <= 20
     for number, page in enumerate(pages, start=1):
         assert f"Page {number} of {len(pages)}" in page
-    assert sum("sensitivity contribution" in page for page in pages) >= 2
+
+
+def test_a_table_over_several_pages_repeats_its_header():
+    d = example(FEW, refused=False)
+    document = report_document(d)
+    budget = document.tables["budget"]
+    long = replace(budget, groups=tuple(replace(one, rows=one.rows * 8) for one in budget.groups))
+    tables = {**document.tables, "budget": long}
+    raw = render_pdf(d, document=replace(document, tables=tables))
+    pages = [re.sub(r"\s+", " ", page.extract_text()) for page in read(raw).pages]
+    with_rows = [page for page in pages if "gain of the voltage display tube.voltage.gain" in page]
+    assert len(with_rows) >= 2
+    assert all("sensitivity contribution" in page for page in with_rows[:2])
 
 
 @pytest.mark.parametrize(
