@@ -100,7 +100,10 @@ def gather_evidence(determination: Determination) -> Evidence:
     zero = scale.zero.value
     spacing = effective_spacing_pm(apparatus.crystal)
     dead_time = apparatus.counter.dead_time_us.value
-    lines = [line.reading_deg for line in scale.lines]
+    groups = line_groups(apparatus.tube.anode)
+    lengths = np.array([group.wavelength_pm for group in groups])
+    angles = np.concatenate([glancing_angle_deg(lengths, spacing, 0.0, n) for n in (1, 2)])
+    lines = (angles[np.isfinite(angles)] + zero).tolist()
 
     columns: dict[str, list[float]] = {}
     for cutoff in cutoffs:
@@ -117,7 +120,7 @@ def gather_evidence(determination: Determination) -> Evidence:
         )
         for name, reading in readings.items():
             _add(columns, name, reading - zero)
-    for index, group in enumerate(line_groups(apparatus.tube.anode)):
+    for index, group in enumerate(groups):
         angle = float(glancing_angle_deg(group.wavelength_pm, spacing))
         columns[f"line/{index}"] = [
             angle

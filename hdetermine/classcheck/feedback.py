@@ -79,7 +79,7 @@ def feedback_of(row: GroupRow) -> Feedback:
     tables = (_comparison(found), _cutoffs(found), _shortcuts(found), _screening(found))
     return Feedback(
         label=row.label,
-        verdict=VERDICT_WORDS[found.verdict],
+        verdict=_capital(VERDICT_WORDS[found.verdict]),
         summary=_summary(found),
         faults=tuple(faults),
         tables=tuple(one for one in tables if one is not None),
@@ -90,6 +90,10 @@ def feedback_of(row: GroupRow) -> Feedback:
         slip_lead=_slip_lead(found),
         simulated=found.simulated,
     )
+
+
+def _capital(text: str) -> str:
+    return text[:1].upper() + text[1:]
 
 
 def _summary(found: GroupFinding) -> str:
@@ -275,7 +279,7 @@ def _slip_text(slip: NamedSlip, with_cutoffs: bool) -> SlipText:
         value = _planck(slip.predicted_J_s, 0.0)
         prediction = f"{source} it gives h{EQUALS}{value}."
     return SlipText(
-        title=slip.title[:1].upper() + slip.title[1:],
+        title=_capital(slip.title),
         sentence=slip.sentence,
         note=plain(slip.note),
         prediction=prediction,

@@ -16,11 +16,20 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import chdtrc, logsumexp
 
-from hdetermine.classcheck.alignment import Alignment
-from hdetermine.classcheck.arithmetic import PROPER, Combination, Prediction, Variant, predict
+from hdetermine.classcheck.alignment import UNSEEN_STEP, Alignment
+from hdetermine.classcheck.arithmetic import (
+    PROPER,
+    Combination,
+    Prediction,
+    Variant,
+    line_through_origin,
+    mean_of_products,
+    predict,
+)
 
 FloatArray = NDArray[np.float64]
 
+WITHOUT_INTERCEPT = (mean_of_products, line_through_origin)
 LARGEST_LOG = 700.0
 """Beyond the exponential of this no float reaches."""
 LARGEST_STEP = 0.3
@@ -116,14 +125,16 @@ def weigh(
     -------
     Weights
     """
-    combinations: tuple[Combination, ...] = PROPER
-    if variant.combine is not None or not alignment.rows.with_h:
-        combinations = PROPER[:1]
+    combinations = _combinations(alignment, variant)
+    readings = _readings(alignment, _own(alignment, variant, own))
     pieces = []
     for combine in combinations:
         prediction = _predict(alignment, variant, combine)
         if prediction is not None:
-            pieces.append(_one(alignment, prediction, shifts, _own(alignment, variant, own), grid))
+            pieces += [
+                _one(alignment, prediction, shifts, single_u, rounding_u, grid)
+                for single_u, rounding_u in readings
+            ]
     if not pieces:
         nothing = np.full(len(shifts), -np.inf)
         return Weights(nothing, nothing, np.zeros(len(shifts)), np.full(len(shifts), np.nan))
@@ -131,13 +142,44 @@ def weigh(
     probability = np.concatenate([piece[1] for piece in pieces])
     h = np.concatenate([piece[2] for piece in pieces])
     # A combination that cannot be done counts as one that was not done.
-    log_mean = logsumexp(log_likelihood, axis=0) - np.log(len(grid) * len(combinations))
+    log_mean = logsumexp(log_likelihood, axis=0) - np.log(
+        len(grid) * len(combinations) * len(readings)
+    )
     best = np.argmax(log_likelihood, axis=0)
     columns = np.arange(len(shifts))
     return Weights(
         np.asarray(log_mean), log_likelihood[best, columns], np.max(probability, axis=0),
         h[best, columns],
     )  # fmt: skip
+
+
+def _combinations(alignment: Alignment, variant: Variant) -> tuple[Combination, ...]:
+    """Ways to combine the voltages that are tried.
+
+    For h alone a line with an intercept is not: its own scatter is several percent, and honest
+    values of h are taken to scatter by 1 to 2 %, however they were made.
+    """
+    if variant.combine is not None or not alignment.rows.with_h:
+        return PROPER[:1]
+    return PROPER if alignment.rows.size > 1 else WITHOUT_INTERCEPT
+
+
+def _readings(alignment: Alignment, own: FloatArray) -> list[tuple[FloatArray, FloatArray]]:
+    """Uncertainty of each reading, and rounding of each claimed number.
+
+    Angles are often written down first and then used as written: their rounding belongs to the
+    reading, and what follows from them follows exactly. Or they are rounded for the claim alone.
+    """
+    rows, rounding = alignment.rows, alignment.rounding_u
+    apart = [(own, rounding)]
+    angles = rows.angles.size
+    if not angles or angles == rows.size:
+        return apart
+    as_written = own.copy()
+    as_written[rows.angles] = np.hypot(as_written[rows.angles], rounding[:angles])
+    rest = rounding.copy()
+    rest[:angles] = UNSEEN_STEP
+    return [*apart, (as_written, rest)]
 
 
 def _predict(alignment: Alignment, variant: Variant, combine: Combination) -> Prediction | None:
@@ -168,10 +210,11 @@ def _one(
     prediction: Prediction,
     shifts: FloatArray,
     own: FloatArray,
+    rounding: FloatArray,
     grid: Sequence[Scatter],
 ) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Log likelihood, probability of chi squared and h, each of shape (grid, F)."""
-    covariance = _covariances(alignment, prediction, own, grid)
+    covariance = _covariances(alignment, prediction, own, rounding, grid)
     lower = np.linalg.cholesky(covariance)
     residual = alignment.log_values - prediction.log_values - shifts
     white = np.linalg.solve(lower, np.broadcast_to(residual.T, (len(grid), *residual.T.shape)))
@@ -189,7 +232,11 @@ def _one(
 
 
 def _covariances(
-    alignment: Alignment, prediction: Prediction, own: FloatArray, grid: Sequence[Scatter]
+    alignment: Alignment,
+    prediction: Prediction,
+    own: FloatArray,
+    rounding: FloatArray,
+    grid: Sequence[Scatter],
 ) -> FloatArray:
     """Covariance of the logarithms for each scatter of the grid, shape (grid, m, m)."""
     evidence, rows = alignment.evidence, alignment.rows
@@ -198,7 +245,7 @@ def _covariances(
     per_zero = np.sum(response * np.radians(1.0) / np.tan(np.radians(evidence.angle_deg)), axis=1)
     zero_u = np.hypot(evidence.zero_u_deg, ZERO_READING_U_deg)
     fixed = (response * own**2) @ response.T + zero_u**2 * np.outer(per_zero, per_zero)
-    fixed = fixed + np.diag(alignment.rounding_u**2)
+    fixed = fixed + np.diag(rounding**2)
     if rows.with_h and not (rows.angles.size or rows.wavelengths.size):
         fixed[-1, -1] += alignment.own_u**2
     independent = response @ response.T
