@@ -65,17 +65,14 @@ def angle_scale(run: Run) -> AngleScale:
     gradient = spacing_gradient(crystal)
     prior_variance = float(np.sum((gradient * spacing_u(crystal)) ** 2))
 
-    weight = 1.0 / variance
-    zero_known = float(np.average(shift, weights=weight))
-    chi2 = float(np.sum(weight * (shift - zero_known) ** 2))
-    if len(used) > 1:
-        inflation = max(chi2 / (len(used) - 1), 1.0)
-        if inflation > NOTABLE_SCATTER and len(used) > 2:
-            remarks = (*remarks, _scatter_remark(inflation))
-        weight = weight / inflation
     design = np.stack([np.ones_like(shift), by_spacing], axis=1)
+    free = free_fit(design, shift, 1.0 / variance)
+    inflation = _inflation(design, shift, 1.0 / variance, max(prior_variance, 1e-16))
+    if inflation > NOTABLE_SCATTER and len(used) > 2:
+        remarks = (*remarks, _scatter_remark(inflation))
+    weight = 1.0 / (variance * inflation)
+    zero_known = float(np.average(shift, weights=weight))
     information = design.T @ (weight[:, np.newaxis] * design)
-    free = free_fit(information, design.T @ (weight * shift))
     information[1, 1] += 1.0 / max(prior_variance, 1e-16)
     posterior = np.linalg.inv(information)
     learnt = posterior[1, 1] < LEARNT * prior_variance
@@ -133,6 +130,19 @@ def angle_scale(run: Run) -> AngleScale:
         zero_by_wavelength_deg=-float(zero_weights @ by_wavelength),
         remarks=remarks,
     )
+
+
+def _inflation(
+    design: FloatArray, shift: FloatArray, weight: FloatArray, prior_variance: float
+) -> float:
+    """Chi-square per degree of freedom of the lines and the stated spacing; at least one."""
+    if shift.size < 2:
+        return 1.0
+    information = design.T @ (weight[:, np.newaxis] * design)
+    information[1, 1] += 1.0 / prior_variance
+    best = np.linalg.solve(information, design.T @ (weight * shift))
+    chi2 = float(weight @ (shift - design @ best) ** 2) + best[1] ** 2 / prior_variance
+    return max(float(chi2) / (shift.size - 1), 1.0)
 
 
 def _scatter_remark(inflation: float) -> str:

@@ -41,13 +41,34 @@ def spacing_gradient(crystal: Crystal) -> FloatArray:
     return np.array([1.0 / crystal.spacing_pm.value, crystal.expansion_per_K.value, warmth])
 
 
-def free_fit(information: FloatArray, moment: FloatArray) -> tuple[float, float] | None:
-    """Relative departure of the spacing and its u with no stated value, or None."""
+def free_fit(
+    design: FloatArray, shift: FloatArray, weight: FloatArray
+) -> tuple[float, float] | None:
+    """Fit zero and spacing without the stated value of the spacing.
+
+    Parameters
+    ----------
+    design : ndarray, shape (n, 2)
+        Derivatives of the lines' shifts by zero and relative spacing.
+    shift, weight : ndarray, shape (n,)
+        Shifts, degrees, and their inverse variances.
+
+    Returns
+    -------
+    (float, float) or None
+        Relative departure of the spacing and its standard uncertainty, widened by the scatter of
+        the lines about the fit; None where the lines do not tell it.
+    """
+    information = design.T @ (weight[:, np.newaxis] * design)
     if np.linalg.cond(information) > 1e12:
         return None
     covariance = np.linalg.inv(information)
-    rho, u = float((covariance @ moment)[1]), float(np.sqrt(covariance[1, 1]))
-    return (rho, u) if u < 0.01 else None
+    best = covariance @ (design.T @ (weight * shift))
+    freedom = shift.size - 2
+    chi2 = float(weight @ (shift - design @ best) ** 2)
+    inflation = max(chi2 / freedom, 1.0) if freedom > 0 else 1.0
+    u = float(np.sqrt(covariance[1, 1] * inflation))
+    return (float(best[1]), u) if u < 0.01 else None
 
 
 def joint_inputs(

@@ -1,0 +1,313 @@
+"""The angle scale from the lines of simulated runs, and without any."""
+
+import math
+from dataclasses import replace
+
+import numpy as np
+import pytest
+from simulated import TRUTH, five_voltages, simulated, voltages
+
+from hdetermine.inference import measurement as names
+from hdetermine.inference.anglescale import angle_scale
+from hdetermine.inference.spacing import (
+    crystal_spacing_pm,
+    free_fit,
+    joint_inputs,
+    spacing_gradient,
+    spacing_u,
+)
+
+LINES_TRUTH = {**TRUTH, "from_deg": 18.0, "to_deg": 54.0}
+W_STRENGTHS = {"L3-M4,5": 1.0, "L2-M4": 0.6, "L3-N5": 0.2, "L2-N4": 0.15, "L1-M3": 0.1}
+
+
+def copper(seed=1, more=None, **tables):
+    return simulated(
+        voltages(35, dwell_s=5.0), {**LINES_TRUTH, **(more or {})}, seed, "Cu", "LiF", **tables
+    )
+
+
+CASES = {
+    "Mo, nine lines": lambda seed: simulated(voltages(26, 34, 38), TRUTH, seed),
+    "Cu, two orders": lambda seed: copper(seed),
+    "Cu, Gaussian": lambda seed: copper(seed, {"kernel": "gaussian"}),
+    "Cu, triangular": lambda seed: copper(seed, {"kernel": "triangular"}),
+    "Cu, other zero": lambda seed: copper(seed, {"zero_deg": -0.4, "resolution_deg": 0.4}),
+    "W L lines": lambda seed: simulated(
+        voltages(35, dwell_s=5.0),
+        {**LINES_TRUTH, "from_deg": 14.0, "line_strengths_deg": W_STRENGTHS},
+        seed, "W", "LiF",
+    ),
+}  # fmt: skip
+
+
+@pytest.mark.parametrize("case", CASES)
+def test_zero_width_and_kernel_are_found(case):
+    pulls = {"zero": [], "width": [], "kernel": []}
+    for seed in (1, 2, 3):
+        run, simulation = CASES[case](seed)
+        scale, truth = angle_scale(run), simulation.truth
+        for name, found, true in (
+            ("zero", scale.zero, truth.zero_deg),
+            ("width", scale.resolution, truth.resolution_deg),
+            ("kernel", scale.kernel, truth.triangular_fraction),
+        ):
+            pulls[name].append((found.value - true) / found.standard_uncertainty)
+        assert scale.zero_from.startswith("lines")
+        assert scale.resolution_from == "lines"
+        assert 0.0 < scale.zero.standard_uncertainty < 0.01
+        assert scale.zero.evaluation == "A"
+        assert 0.0 <= scale.kernel.value <= 1.0
+    for name, values in pulls.items():
+        assert np.all(np.abs(values) < 3.5), name
+        assert abs(np.mean(values)) < 2.0, name
+
+
+def test_spacing_and_zero_together():
+    """Two orders, far apart: the lines tell the spacing better than a loosely stated one."""
+    run, simulation = copper(2, {"spacing_pm": 201.75})
+    run = replace(
+        run,
+        apparatus=replace(
+            run.apparatus,
+            crystal=replace(
+                run.apparatus.crystal,
+                spacing_pm=run.apparatus.crystal.spacing_pm.with_uncertainty(0.5),
+            ),
+        ),
+    )
+    scale, truth = angle_scale(run), simulation.truth
+    assert scale.zero_from == "lines, spacing fitted too"
+    spacing = next(q for q in scale.inputs if q.name == names.SPACING)
+    assert spacing.value == pytest.approx(201.75, abs=4.0 * spacing.standard_uncertainty)
+    assert spacing.standard_uncertainty < 0.05
+    assert scale.zero.value == pytest.approx(
+        truth.zero_deg, abs=4.0 * scale.zero.standard_uncertainty
+    )
+    # Zero and spacing cannot be told apart fully.
+    place = [q.name for q in scale.inputs].index(names.SPACING)
+    assert 0.2 < scale.correlation[0, place] < 1.0
+    # Without the stated value the answer is nearly the same.
+    assert scale.free_spacing_pm == pytest.approx(spacing.value, abs=0.02)
+
+
+def test_free_spacing_tells_a_wrong_one():
+    """The sheet is sure of its spacing, and wrong by 0.3 %."""
+    run, _ = copper(3, {"spacing_pm": 201.95})
+    scale = angle_scale(run)
+    off = (scale.free_spacing_pm - 201.35) / scale.free_spacing_u_pm
+    assert off > 10.0
+    assert scale.free_spacing_pm == pytest.approx(201.95, abs=4.0 * scale.free_spacing_u_pm)
+    assert any("scatter" in remark for remark in scale.remarks)
+
+
+def test_lines_close_together_leave_the_spacing_alone():
+    run, _ = five_voltages()
+    scale = angle_scale(run)
+    assert scale.zero_from == "lines, spacing as stated"
+    spacing = next(q for q in scale.inputs if q.name == names.SPACING)
+    assert spacing == run.apparatus.crystal.spacing_pm
+    # An error of the spacing is an error of the zero, with the same sign.
+    place = [q.name for q in scale.inputs].index(names.SPACING)
+    assert 0.05 < scale.correlation[0, place] < 1.0
+
+
+def test_zero_answers_to_the_spacing_as_refits_do():
+    """Another spacing in the sheet: the zero moves as the correlation says."""
+    run, _ = five_voltages()
+    ends = []
+    for sign in (1.0, -1.0):
+        crystal = run.apparatus.crystal
+        moved = replace(crystal, spacing_pm=replace(crystal.spacing_pm, value=282.01 + 0.2 * sign))
+        ends.append(angle_scale(replace(run, apparatus=replace(run.apparatus, crystal=moved))))
+    slope = (ends[0].zero.value - ends[1].zero.value) / 0.4
+    scale = angle_scale(run)
+    place = [q.name for q in scale.inputs].index(names.SPACING)
+    told = (
+        scale.correlation[0, place]
+        * scale.zero.standard_uncertainty
+        / scale.inputs[place].standard_uncertainty
+    )
+    assert slope == pytest.approx(told, rel=0.05)
+
+
+def test_zero_answers_to_the_reference_wavelengths():
+    """A relative change of all wavelengths is one of the spacing with the other sign."""
+    run, _ = five_voltages()
+    scale = angle_scale(run)
+    place = [q.name for q in scale.inputs].index(names.SPACING)
+    by_spacing = (
+        scale.correlation[0, place]
+        * scale.zero.standard_uncertainty
+        / scale.inputs[place].standard_uncertainty
+    )
+    assert scale.zero_by_wavelength_deg == pytest.approx(-282.01 * by_spacing, rel=0.01)
+    wavelength = scale.inputs[-1]
+    assert wavelength.name == names.WAVELENGTH_SCALE
+    assert 2e-5 <= wavelength.standard_uncertainty < 1e-4
+
+
+def test_correlation_is_one():
+    for run in (five_voltages()[0], copper()[0]):
+        scale = angle_scale(run)
+        assert [q.name for q in scale.inputs] == [
+            names.ZERO, names.SPACING, names.TEMPERATURE, names.EXPANSION,
+            names.WAVELENGTH_SCALE,
+        ]  # fmt: skip
+        matrix = scale.correlation
+        assert matrix.shape == (5, 5)
+        np.testing.assert_allclose(matrix, matrix.T)
+        np.testing.assert_allclose(np.diag(matrix), 1.0)
+        assert np.linalg.eigvalsh(matrix)[0] > -1e-9
+
+
+REFERENCE = [
+    *voltages(24, 28, 33),
+    {"name": "reference", "tube_voltage_kV": 35.0, "edge": False, "dwell_s": 5.0},
+]
+
+
+def reference_run(shift):
+    """Edge scans with lines, and a reference scan whose readings are shifted."""
+    run, simulation = simulated(REFERENCE, TRUTH, seed=6)
+    scans = tuple(
+        scan if scan.edge else replace(scan, reading_deg=scan.reading_deg + shift)
+        for scan in run.scans
+    )
+    return replace(run, scans=scans), simulation
+
+
+def test_a_reference_scan_with_another_zero_is_not_used_and_said():
+    run, simulation = reference_run(0.12)
+    scale = angle_scale(run)
+    assert scale.zero.value == pytest.approx(
+        simulation.truth.zero_deg, abs=4.0 * scale.zero.standard_uncertainty
+    )
+    assert any(
+        "reference scan reference has another zero offset" in remark for remark in scale.remarks
+    )
+    by_scan = {line.scan: line for line in scale.lines}
+    assert not by_scan["reference"].used
+    assert "zero differs by +0.1" in by_scan["reference"].reason
+    assert by_scan["u33"].used
+
+
+def test_a_reference_scan_that_agrees_is_used():
+    run, _ = reference_run(0.0)
+    scale = angle_scale(run)
+    assert {line.scan for line in scale.lines if line.used} >= {"reference", "u33"}
+    assert not any("another zero offset" in remark for remark in scale.remarks)
+
+
+@pytest.mark.parametrize("stated", [None, {"value": 0.3, "u": 0.02}])
+def test_without_lines_the_run_sheet_counts(stated):
+    run, _ = simulated(
+        voltages(28, 35),
+        {**TRUTH, "to_deg": 5.8},
+        seed=1,
+        goniometer={"resolution_deg": stated} if stated else {},
+    )
+    scale = angle_scale(run)
+    assert scale.zero == run.apparatus.goniometer.zero_deg
+    assert scale.zero_from == "run sheet"
+    assert scale.lines == ()
+    assert any("no characteristic line" in remark for remark in scale.remarks)
+    assert scale.kernel == run.apparatus.goniometer.kernel_triangular_fraction
+    assert np.array_equal(scale.correlation, np.eye(4))
+    if stated:
+        assert scale.resolution.value == 0.3
+        assert scale.resolution_from == "run sheet"
+    else:
+        assert math.isinf(scale.resolution.standard_uncertainty)
+        assert scale.resolution_from == "edges"
+
+
+def crystal():
+    return five_voltages()[0].apparatus.crystal
+
+
+def test_spacing_at_its_temperature():
+    one = crystal()
+    warmth = one.temperature_C.value - one.reference_temperature_C
+    assert warmth != 0.0
+    expected = one.spacing_pm.value * (1.0 + one.expansion_per_K.value * warmth)
+    assert crystal_spacing_pm(one) == pytest.approx(expected)
+    parts = ("spacing_pm", "temperature_C", "expansion_per_K")
+    for part, slope in zip(parts, spacing_gradient(one), strict=True):
+        quantity = getattr(one, part)
+        step = 1e-3 * abs(quantity.value)
+        up = replace(one, **{part: replace(quantity, value=quantity.value + step)})
+        relative = crystal_spacing_pm(up) / crystal_spacing_pm(one) - 1.0
+        assert slope == pytest.approx(relative / step, rel=2e-3)
+
+
+def test_joint_inputs_keep_what_is_known_and_add_what_was_learnt():
+    """The variance of the relative spacing after the lines is shared out among its inputs."""
+    one = crystal()
+    gradient = spacing_gradient(one)
+    prior = float(np.sum((gradient * spacing_u(one)) ** 2))
+    zero = five_voltages()[0].apparatus.goniometer.zero_deg
+    for learnt in (1.0, 0.3, 0.01):
+        covariance = np.array([[4e-6, 0.4 * math.sqrt(4e-6 * learnt * prior)], [0.0, 0.0]])
+        covariance[1] = [covariance[0, 1], learnt * prior]
+        inputs, correlation = joint_inputs(one, zero, gradient, covariance, 1e-4)
+        u = np.array([2e-3, *(q.standard_uncertainty for q in inputs[1:])])
+        whole = correlation * np.outer(u, u)
+        towards = np.concatenate([[0.0], gradient])
+        assert towards @ whole @ towards == pytest.approx(learnt * prior, rel=1e-9)
+        assert whole[0] @ towards == pytest.approx(covariance[0, 1], rel=1e-9)
+        moved = sum(
+            slope * (q.value - part.value)
+            for slope, q, part in zip(
+                gradient, inputs[1:], (one.spacing_pm, one.temperature_C, one.expansion_per_K),
+                strict=True,
+            )
+        )  # fmt: skip
+        assert moved == pytest.approx(1e-4, rel=1e-9)
+        assert np.linalg.eigvalsh(correlation)[0] > -1e-9
+
+
+def test_an_exact_spacing_stays_exact():
+    one = crystal()
+    exact = replace(
+        one,
+        spacing_pm=one.spacing_pm.with_uncertainty(0.0),
+        temperature_C=one.temperature_C.with_uncertainty(0.0),
+        expansion_per_K=one.expansion_per_K.with_uncertainty(0.0),
+    )
+    zero = five_voltages()[0].apparatus.goniometer.zero_deg
+    inputs, correlation = joint_inputs(
+        exact, zero, spacing_gradient(exact), np.diag([1e-6, 0.0]), 0.0
+    )
+    assert [q.value for q in inputs[1:]] == [
+        exact.spacing_pm.value, exact.temperature_C.value, exact.expansion_per_K.value,
+    ]  # fmt: skip
+    np.testing.assert_array_equal(correlation, np.eye(4))
+
+
+def test_free_fit():
+    """Two lines at different angles solve for zero and spacing; one alone does not."""
+    by_spacing, shift, weight = np.array([-10.0, -60.0]), np.array([0.05, 0.02]), np.full(2, 1e6)
+    design = np.stack([np.ones(2), by_spacing], axis=1)
+    rho, u = free_fit(design, shift, weight)
+    assert rho == pytest.approx((0.05 - 0.02) / 50.0)
+    assert u == pytest.approx(math.sqrt(2.0) * 1e-3 / 50.0)
+    assert free_fit(design[:1], shift[:1], weight[:1]) is None
+    near = np.array([[1.0, -10.0], [1.0, -10.02]])
+    assert free_fit(near, shift, weight) is None
+
+
+def test_free_fit_is_widened_by_scatter_about_it():
+    by_spacing = np.array([-10.0, -20.0, -40.0, -60.0])
+    design = np.stack([np.ones(4), by_spacing], axis=1)
+    line = 0.05 - 2e-4 * by_spacing
+    weight = np.full(4, 1e6)
+    rho, u = free_fit(design, line, weight)
+    # Off the line by three standard uncertainties each, without a trend.
+    off = 3e-3 * np.array([0.4, -0.8, 0.6, -0.2])
+    off = off - design @ np.linalg.lstsq(design, off, rcond=None)[0]
+    wide = free_fit(design, line + off, weight)
+    chi2 = float(np.sum(off**2 * 1e6))
+    assert chi2 / 2.0 > 1.0
+    assert wide[0] == pytest.approx(rho, abs=1e-9)
+    assert wide[1] == pytest.approx(u * math.sqrt(chi2 / 2.0), rel=1e-6)
