@@ -224,6 +224,7 @@ def test_figures_behind_the_posterior(d):
     priors = rows_routes.prior_rows(route)
     assert [row[0].text for row in priors.rows] == ["h", "gain of the voltage display"]
     assert priors.rows[1][3].text == "1.0001(39)"
+    assert priors.rows[0][3].number == route.value_J_s
     wider = rows_routes.sensitivity_rows(route)
     assert [[cell.text for cell in row] for row in wider.rows] == [
         ["none: the posterior as it is", "6.622", "0.053"],

@@ -53,9 +53,11 @@ def test_budget_by_source_sums_up(d):
     assert sum(row[4].number for row in sources_) == pytest.approx(whole[4].number)
     assert whole[3].number == pytest.approx(d.budget.combined_standard_uncertainty)
     named = {row[0].text: row for row in table.rows}
-    assert named["counting statistics"][1].text == f"θ of {len(d.used)} scans"
+    assert named["counting statistics"][1].text == f"one for each of {len(d.used)} scans"
+    assert named["continuum shape near the limit"][1].text == "a, ε"
     assert named["spacing with temperature"][3].text == "–"
-    assert "refraction" in named["all others"][1].text
+    assert named["all others"][1].text == "of 3 sources"
+    assert "All others: cathode work function, refraction" in table.note
     parts = sum(row[3].number ** 2 for row in sources_ if row[3].number)
     negative = sum(row[4].number for row in sources_ if row[4].number < 0.0)
     u = d.budget.combined_standard_uncertainty

@@ -17,6 +17,7 @@ from dataclasses import dataclass
 from matplotlib.figure import Figure
 
 from hdetermine.report.figure_style import LIGHT
+from hdetermine.report.rounding import unbroken
 
 SVG = "{http://www.w3.org/2000/svg}"
 HREF = "{http://www.w3.org/1999/xlink}href"
@@ -67,7 +68,7 @@ def picture(figure: Figure, key: str, alt: str, caption: str) -> Picture:
     raw = io.StringIO()
     figure.savefig(raw, format="svg", metadata={"Date": None, "Creator": None})
     svg, width, height = compact(raw.getvalue(), key)
-    return Picture(key, svg, alt, caption, width, height)
+    return Picture(key, svg, alt, unbroken(caption), width, height)
 
 
 def compact(text: str, key: str) -> tuple[str, float, float]:

@@ -8,6 +8,7 @@ even, so that a table and a sentence cannot disagree.
 from __future__ import annotations
 
 import math
+import re
 from dataclasses import dataclass
 from decimal import ROUND_HALF_EVEN, Context, Decimal
 
@@ -164,6 +165,11 @@ def _parenthesis(parts: Rounded) -> str:
 
 
 # --- typography -------------------------------------------------------------------------------
+
+
+def unbroken(text: str) -> str:
+    """Keep every number with its per cent sign, so that no line ends between them."""
+    return re.sub(r"(?<=\d) (?=%)", THIN, text)
 
 
 def grouped(digits: str) -> str:

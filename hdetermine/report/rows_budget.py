@@ -7,7 +7,7 @@ import math
 import numpy as np
 
 from hdetermine.records.results import Budget, BudgetRow
-from hdetermine.report.rounding import power_of_ten, typeset_figure
+from hdetermine.report.rounding import power_of_ten, typeset_figure, unbroken
 from hdetermine.report.spoken import input_words, scan_of, sources
 from hdetermine.report.table import (
     NONE,
@@ -42,7 +42,7 @@ COLUMNS = (
     Column("ν", True),
     Column("sensitivity", True),
     Column("contribution", True),
-    Column("share / %", True),
+    Column("share /\N{NO-BREAK SPACE}%", True),
 )
 
 
@@ -70,11 +70,13 @@ def source_rows(budget: Budget) -> Table:
         for source in shown
     ]
     small = [source for source in every if source not in shown]
+    others = ""
     if small:
         rest = sum(source.variance_share for source in small)
+        others = f" All others: {', '.join(source.words for source in small)}."
         rows.append(
-            (Cell("all others"), words(", ".join(source.words for source in small)), Cell(NONE),
-             part(rest), Cell(decimals(100.0 * rest, 2).text, rest))
+            (Cell("all others"), Cell(f"of {len(small)} sources"), Cell(NONE), part(rest),
+             Cell(decimals(100.0 * rest, 2).text, rest))
         )  # fmt: skip
     rows.append(
         (Cell("all together"), Cell(f"{len(budget.rows)} inputs"), Cell(""), part(1.0),
@@ -84,11 +86,12 @@ def source_rows(budget: Budget) -> Table:
         "sources",
         f"Budget of {budget.measurand} by source",
         ("source", "inputs", "voltages", _power_heading("part of u", exponent, budget.unit),
-         "share / %"),
+         "share /\N{NO-BREAK SPACE}%"),
         rows,
         numeric=(3, 4),
         note="Share: of the variance u². Part of u: its root, so that the squares of the parts sum "
-        "to that of u; none where correlations make a share negative.",
+        "to that of u; none where correlations make a share negative. Symbols: see the budget "
+        f"below.{others}",
     )  # fmt: skip
 
 
@@ -99,8 +102,9 @@ def _inputs_of(source: str, common: bool, budget: Budget) -> str:
         for row in budget.rows
         if (row.group or input_words(row.quantity)) == source and row.common is common
     ]
-    signs = ", ".join(dict.fromkeys(_sign(row) for row in rows))
-    return signs if common or len(rows) == 1 else f"{signs} of {len(rows)} scans"
+    if not common and len(rows) > 1:
+        return f"one for each of {len(rows)} scans"
+    return ", ".join(_sign(row) for row in rows)
 
 
 def correlated_rows(budget: Budget) -> Table | None:
@@ -128,7 +132,7 @@ def correlated_rows(budget: Budget) -> Table | None:
     return table(
         "correlated",
         "Correlated inputs: their shares belong together",
-        ("inputs", "correlation", "shares / %", "together / %"),
+        ("inputs", "correlation", "shares /\N{NO-BREAK SPACE}%", "together /\N{NO-BREAK SPACE}%"),
         rows,
         numeric=(3,),
         note="A fit that finds several inputs at once leaves them correlated: where one errs, so "
@@ -155,8 +159,7 @@ def correlated_sets(budget: Budget) -> tuple[tuple[int, ...], ...]:
 def _sign(row: BudgetRow) -> str:
     """Symbol of an input within a line of text."""
     one = symbol(row.symbol)
-    below = one.subscript.translate(str.maketrans("0123456789", "₀₁₂₃₄₅₆₇₈₉"))
-    return one.text + (below if not below.isascii() else f"_{below}" if below else "")
+    return one.text + one.subscript.translate(str.maketrans("0123456789rs", "₀₁₂₃₄₅₆₇₈₉ᵣₛ"))
 
 
 def budget_rows(budget: Budget) -> Table:
@@ -263,7 +266,7 @@ def _note(budget: Budget) -> str:
     if pairs:
         listed = "; ".join(f"r({one}, {two}) = {r}" for one, two, r in pairs)
         parts.append(f"{CORRELATED_MARK} Correlated: {listed}{_and_less(budget)}.")
-    return " ".join(parts)
+    return unbroken(" ".join(parts))
 
 
 def _and_less(budget: Budget) -> str:

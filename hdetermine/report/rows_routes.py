@@ -164,6 +164,8 @@ def prior_rows(route: Route | None) -> Table | None:
                              _number(prior.get(f"{stage}standard_uncertainty")))
             for stage in ("", "posterior_")
         )  # fmt: skip
+        if name == "h":
+            after = with_uncertainty(route.value_J_s, route.standard_uncertainty_J_s)
         rows.append(
             (words(input_words(name)), words(str(prior.get("distribution", ""))), before, after,
              words(spelled(str(prior.get("unit", "")))))

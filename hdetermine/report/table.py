@@ -15,6 +15,7 @@ from hdetermine.report.rounding import (
     typeset_figure,
     typeset_plus_minus,
     typeset_shorthand,
+    unbroken,
 )
 
 GREEK = {
@@ -105,7 +106,8 @@ def table(
 ) -> Table:
     """Make a table of one group; `numeric` lists the columns that hold numbers."""
     columns = tuple(Column(heading, i in numeric) for i, heading in enumerate(headings))
-    return Table(key, caption, columns, (Group("", tuple(tuple(row) for row in rows)),), note)
+    return Table(key, caption, columns, (Group("", tuple(tuple(row) for row in rows)),),
+                 unbroken(note))  # fmt: skip
 
 
 # --- cells ------------------------------------------------------------------------------------
