@@ -13,6 +13,7 @@ import numpy as np
 from scipy.stats import chi2 as chi2_distribution
 
 from hdetermine.inference import measurement as names
+from hdetermine.inference.spacing import spacing_gradient, spacing_u
 from hdetermine.physics.reference import PLANCK_CONSTANT_J_S
 from hdetermine.records.apparatus import Apparatus
 from hdetermine.records.results import (
@@ -179,7 +180,9 @@ def _spacing(apparatus: Apparatus, scale: AngleScale) -> Check:
     stated = apparatus.crystal.spacing_pm
     figure = None
     if scale.free_spacing_pm is not None and scale.free_spacing_u_pm is not None:
-        u = math.hypot(stated.standard_uncertainty, scale.free_spacing_u_pm)
+        # The lines tell the spacing at the temperature of the run, known no better than that.
+        relative = spacing_gradient(apparatus.crystal) * spacing_u(apparatus.crystal)
+        u = math.hypot(stated.value * float(np.linalg.norm(relative)), scale.free_spacing_u_pm)
         figure = (scale.free_spacing_pm - stated.value) / u
     return _difference(
         "spacing from the lines alone",
