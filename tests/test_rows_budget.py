@@ -74,6 +74,16 @@ def test_correlated_inputs_stand_together_with_their_sum(d):
     assert rows_budget.correlated_pairs(alone) == ()
 
 
+def test_terms_of_one_series_are_named_once(d):
+    first = replace(d.budget.rows[0], quantity="continuum.smooth_1", symbol="t1")
+    second = replace(first, quantity="continuum.smooth_2", symbol="t2")
+    matrix = np.array([[1.0, -0.7], [-0.7, 1.0]])
+    table = rows_budget.correlated_rows(
+        replace(d.budget, rows=(first, second), correlation=matrix))  # fmt: skip
+    assert table.rows[0][0].text == "smooth factor of the continuum (t₁, t₂)"
+    assert table.rows[0][1].text == "r(t₁, t₂) = −0.70"
+
+
 def test_sets_of_correlated_inputs_are_linked_through_others(d):
     matrix = np.eye(len(d.budget.rows))
     for i, j, r in ((0, 3, 0.5), (3, 5, -0.4), (1, 2, 0.2), (4, 6, 0.01)):

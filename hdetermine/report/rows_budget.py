@@ -6,6 +6,7 @@ import math
 
 import numpy as np
 
+from hdetermine.budget.planck import scan_family
 from hdetermine.records.results import Budget, BudgetRow
 from hdetermine.report.rounding import power_of_ten, typeset_figure, unbroken
 from hdetermine.report.spoken import input_words, scan_of, sources
@@ -121,7 +122,7 @@ def correlated_rows(budget: Budget) -> Table | None:
         together = sum(row.variance_share for row in named)
         rows.append(
             (
-                words("; ".join(f"{_full_words(row.quantity)} ({_sign(row)})" for row in named)),
+                words(_named(named)),
                 Cell("; ".join(pairs)),
                 Cell(", ".join(shares)),
                 Cell(decimals(100.0 * together, 2).text, together),
@@ -139,6 +140,16 @@ def correlated_rows(budget: Budget) -> Table | None:
         "does the other. Their contributions then reinforce or cancel each other, so that a share "
         "by itself may be large or negative; what counts is the sum of the set.",
     )
+
+
+def _named(rows: list[BudgetRow]) -> str:
+    """Inputs in words with their symbols, terms of one series once."""
+    signs: dict[str, list[str]] = {}
+    for row in rows:
+        series = scan_family(row.quantity)
+        name = _full_words(row.quantity if series.startswith("scan.") else series)
+        signs.setdefault(name, []).append(_sign(row))
+    return "; ".join(f"{name} ({', '.join(found)})" for name, found in signs.items())
 
 
 def correlated_sets(budget: Budget) -> tuple[tuple[int, ...], ...]:
