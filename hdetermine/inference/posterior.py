@@ -60,7 +60,7 @@ def posterior_route(
         Two calls with the same model and seed agree bit for bit, whatever the state of NumPy's
         global generator, which is left alone.
     progress : callable or None
-        Called with ("posterior", steps done, steps to do).
+        Called with ("posterior", steps done, steps to do), then with ("priors doubled", ...).
     effort : Effort or None
         Length of the chain; it is doubled until it has converged, up to a cap.
 
@@ -122,15 +122,25 @@ def _converged_chain(
     progress: Progress | None,
 ) -> tuple[Chain, FloatArray, FloatArray, Convergence]:
     """Run until h and all inputs have converged, doubling the steps up to the cap."""
-    steps = effort.steps
+    steps, before = effort.steps, 0
     while True:
-        chain = run_chain(density, seed, effort.walkers, steps, progress)
+        chain = run_chain(
+            density, seed, effort.walkers, steps, _stage(progress, "posterior", before)
+        )
         planck, inputs = density.points(chain.flat)
         parameters = np.column_stack([planck / planck.mean(), inputs.T])
         judged = convergence(parameters.reshape(chain.positions.shape))
         if not judged.failure or 2 * steps > effort.maximum_steps:
             return chain, planck, inputs, judged
+        before += steps
         steps *= 2
+
+
+def _stage(progress: Progress | None, stage: str, before: int = 0) -> Progress | None:
+    """Tell a chain's progress under a name of its own, after so many steps of earlier chains."""
+    if progress is None:
+        return None
+    return lambda _, done, total: progress(stage, before + done, before + total)
 
 
 def _chain_figures(
@@ -233,7 +243,8 @@ def _all_doubled(
     except InputError:
         return None
     density = posterior_density(doubled)
-    chain = run_chain(density, seed, effort.walkers, max(effort.steps // 2, 100), progress)
+    steps = max(effort.steps // 2, 100)
+    chain = run_chain(density, seed, effort.walkers, steps, _stage(progress, "priors doubled"))
     planck, _ = density.points(chain.flat)
     low, high = np.quantile(planck, [0.025, 0.975])
     return {
