@@ -22,7 +22,9 @@ def working(title: str) -> Iterator[Progress]:
 
     console = Console(stderr=True)
     columns = (TextColumn("{task.description}"), BarColumn(), TimeElapsedColumn())
-    with Progress(*columns, console=console, transient=True) as bar:
+    # Disabled, or it would end with an empty line in a file or a pipe.
+    off = not console.is_terminal
+    with Progress(*columns, console=console, transient=True, disable=off) as bar:
         task = bar.add_task(title, total=None)
 
         def report(stage: str, done: int, total: int) -> None:
