@@ -168,6 +168,12 @@ def test_checks_and_backwards(d):
     checks = rows.check_rows(d)
     assert [cell.text for cell in column(checks, "outcome")] == [
         "failed", "passed", "not possible"]  # fmt: skip
+    short = [cell.text for cell in column(rows.check_rows(d, brief=True), "meaning")]
+    assert short[1] == ""
+    sound = rows.check_rows(replace(d, checks=d.checks[:1]), brief=True)
+    assert [one.heading for one in sound.columns] == ["check", "outcome", "figure", "limit"]
+    assert len(sound.rows[0]) == 4
+    assert [short[0], short[2]] == [checks.rows[0][4].text, checks.rows[2][4].text]
     assert [cell.text for cell in column(checks, "figure")] == ["−2.60", "0.40", "–"]
     backwards = rows.backward_rows(d)
     assert backwards.rows[0][1].number == d.read_backwards.voltage_gain

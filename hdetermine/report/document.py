@@ -135,7 +135,7 @@ def report_document(
         brief=brief,
         lead=lead(d),
         figures=pictures,
-        tables=_tables(d),
+        tables=_tables(d, brief),
         scans=() if brief else _panels(d, pictures),
         posterior_state="absent" if posterior is None else "" if posterior.usable else "unusable",
         scale_remarks=tuple(remark(text) for text in d.angle_scale.remarks),
@@ -188,14 +188,14 @@ def apparatus_line(d: Determination) -> str:
     return ", ".join(parts)
 
 
-def _tables(d: Determination) -> dict[str, Table]:
+def _tables(d: Determination, brief: bool) -> dict[str, Table]:
     posterior, monte_carlo = d.routes.get("posterior"), d.routes.get("monte_carlo")
     made = (
         rows.result_rows(d),
         rows.cutoff_rows(d),
         rows_routes.route_rows(d),
         rows.backward_rows(d),
-        rows.check_rows(d),
+        rows.check_rows(d, brief=brief),
         rows.improvement_rows(d),
         rows.refused_rows(d),
         rows_budget.source_rows(d.budget),

@@ -226,19 +226,26 @@ def _difference(implied: float, implied_u: float, stated: Quantity) -> Cell:
     return decimals((implied - stated.value) / u if u > 0.0 else math.nan, 1, signed=True)
 
 
-def check_rows(d: Determination) -> Table:
-    """Consistency checks, the failed ones first, each with figure, limit and meaning."""
+def check_rows(d: Determination, *, brief: bool = False) -> Table:
+    """Consistency checks, the failed ones first, each with figure, limit and meaning.
+
+    A brief table gives the meaning of failed ones only.
+    """
     state = {True: "passed", False: "failed", None: "not possible"}
     rows = [
         (words(check.name, check.measure), Cell(state[check.passed]), decimals(check.figure, 2),
-         decimals(check.limit, 2), Cell(sentence(check.meaning)))
+         decimals(check.limit, 2),
+         Cell("" if brief and check.passed else sentence(check.meaning)))
         for check in sorted(d.checks, key=lambda check: check.passed is not False)
     ]  # fmt: skip
+    headings = ("check", "outcome", "figure", "limit", "meaning")
+    told = any(row[-1].text for row in rows)
+    shown = len(headings) if told else len(headings) - 1
     return table(
         "checks",
-        "Figure, limit and meaning of each check",
-        ("check", "outcome", "figure", "limit", "meaning"),
-        rows,
+        "Figure, limit and meaning of each check" if told else "Figure and limit of each check",
+        headings[:shown],
+        [row[:shown] for row in rows],
         numeric=(2, 3),
         note="Small print: what the figure is; a limit holds for its magnitude. About 99 % of "
         "sound runs keep each of the limits that come from a normal or a chi-square distribution. "
