@@ -23,7 +23,7 @@ from hdetermine.inference.shared import (
 )
 from hdetermine.records.quantity import Quantity
 
-SHARED_TRUTH = np.array([1.3, -0.5])
+SHARED_TRUTH = np.array([1.3, -0.5, 0.3])
 # Cutoff reading and energy at the limit of three voltages.
 EDGES = ((5.2, 30.0), (4.5, 35.0), (6.2, 25.0))
 
@@ -64,14 +64,19 @@ def shared(request):
 
 
 def test_the_smooth_map_is_that_of_one_function():
-    """ln T = t1 ln r + t2 (ln r)^2 about another reference; constants go into the amplitude."""
-    t1, t2, ratio = 1.3, -0.5, 1.23
-    a1, a2 = smooth_map(ratio) @ np.array([t1, t2])
+    """ln T = t1 ln r + t2 (ln r)^2 + t3 (ln r)^3 about another reference, to second order.
+
+    Constants go into the amplitude; the cube of the new logarithm has no term of its own.
+    """
+    t1, t2, t3, ratio = 1.3, -0.5, 0.3, 1.23
+    a1, a2 = smooth_map(ratio) @ np.array([t1, t2, t3])
     for x in (0.0, 0.1, 0.4):
         whole = math.log(ratio) + math.log1p(x)
-        start = t1 * math.log(ratio) + t2 * math.log(ratio) ** 2
+        start = t1 * math.log(ratio) + t2 * math.log(ratio) ** 2 + t3 * math.log(ratio) ** 3
         own = a1 * math.log1p(x) + a2 * math.log1p(x) ** 2
-        assert t1 * whole + t2 * whole**2 == pytest.approx(start + own)
+        dropped = t3 * math.log1p(x) ** 3
+        exact = t1 * whole + t2 * whole**2 + t3 * whole**3
+        assert exact == pytest.approx(start + own + dropped)
 
 
 def test_names_and_truth(shared):
@@ -107,12 +112,12 @@ def joint_information(shared):
         # Departure of (a1, a2) from what the shared function asks, with its freedom.
         departure = np.zeros((2, p + g))
         departure[:, 2:4] = np.eye(2)
-        departure[:, -2:] = -smooth_map(edge_sine(fit) / shared.reference_sine)
+        departure[:, -3:] = -smooth_map(edge_sine(fit) / shared.reference_sine)
         block += departure.T @ np.diag(np.array(OWN_FREEDOM) ** -2.0) @ departure
         block[5, 5] += 1.5**-2.0  # prior of the background's slope
         information[np.ix_(columns, columns)] += block
         at += p
-    information[-2:, -2:] += np.eye(2) / 9.0  # prior of the shared numbers: 3
+    information[-3:, -3:] += np.eye(3) / 9.0  # prior of the shared numbers: 3
     return information
 
 
