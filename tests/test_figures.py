@@ -11,6 +11,8 @@ import numpy as np
 import pytest
 from report_fixture import example
 
+from hdetermine.report.figure_budget import routes_picture
+from hdetermine.report.figure_lines import lines_picture
 from hdetermine.report.figure_posterior import posterior_pictures
 from hdetermine.report.figure_relation import relation_picture
 from hdetermine.report.figure_scan import (
@@ -197,6 +199,48 @@ def test_routes_that_are_not_usable_are_drawn_hollow():
 
 def test_without_lines_there_is_no_figure_of_them():
     assert draw_figures(example(lines=False)).lines is None
+
+
+def test_lines_that_serve_are_marked_in_their_scan(d, figures):
+    marked = {line.scan for line in d.angle_scale.lines if line.used}
+    for scan, drawn in zip(d.run.scans, figures.scans, strict=True):
+        assert ("K-L2,3" in drawn[0].svg) is (scan.name in marked)
+        assert ("Marked on top: Mo K-L2,3 at 7.34" in drawn[0].alt) is (scan.name in marked)
+        assert "K-N2,3" not in drawn[0].svg  # found, but not used
+
+
+def test_a_line_far_off_stands_at_the_border_with_its_residual(d):
+    scale = d.angle_scale
+    lines = tuple(
+        replace(line, expected_deg=line.reading_deg - (0.27 if not line.used else 0.002))
+        for line in scale.lines
+    )
+    with matplotlib.rc_context(STYLE):
+        far = lines_picture(replace(scale, lines=lines)).svg
+        near = lines_picture(scale).svg
+    assert "+0.27°" in far
+    assert "°<" not in near.replace("/ °<", "")
+
+
+def test_one_line_seen_often_has_an_abscissa_to_read(d):
+    """Thousandths of a degree between the scans are no scale for the axis."""
+    lines = tuple(line for line in d.angle_scale.lines if line.label == "Mo K-L2,3")
+    with matplotlib.rc_context(STYLE):
+        svg = lines_picture(replace(d.angle_scale, lines=lines)).svg
+    ticks = [float(one) for one in re.findall(r">(\d\.\d+)<", svg)]
+    assert max(ticks) - min(ticks) >= 0.5
+
+
+def test_label_of_a_route_gives_way_to_the_si_value(d):
+    """It stands at the other end where the line of the SI value would run through it."""
+    ends = []
+    for reference in (6.5745e-34, 6.7e-34):
+        moved = replace(d, comparison=replace(d.comparison, reference_J_s=reference))
+        with matplotlib.rc_context(STYLE):
+            svg = routes_picture(moved).svg
+        ends.append(re.search(r"<text[^>]*>linear propagation", svg)[0])
+    assert "end" in ends[0]
+    assert "end" not in ends[1]
 
 
 def test_brief_leaves_out_scans(d):
