@@ -227,7 +227,7 @@ def test_one_line_seen_often_has_an_abscissa_to_read(d):
     lines = tuple(line for line in d.angle_scale.lines if line.label == "Mo K-L2,3")
     with matplotlib.rc_context(STYLE):
         svg = lines_picture(replace(d.angle_scale, lines=lines)).svg
-    ticks = [float(one) for one in re.findall(r">(\d\.\d+)<", svg)]
+    ticks = [float(one) for one in re.findall(r">([67]\.\d+)<", svg)]
     assert max(ticks) - min(ticks) >= 0.5
 
 
