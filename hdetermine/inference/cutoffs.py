@@ -178,6 +178,9 @@ def _cutoff(run: Run, scale: AngleScale, edge: Edge, shared: SharedTerms) -> Cut
         replace(window, smooth_mean=smooth[0], smooth_u=smooth[1])
         for window in windows(scan, edge.points, edge.fit.reading_deg, given, edge.obstacles)
     )
+    if not members:
+        # The edge moved by a fraction of a step: the window of the first fit still holds.
+        members = (edge.fit.window,)
     family = fit_family(members, edge.fit, given)
     if family is None:
         return _refusal(scan, "the fit did not converge")
