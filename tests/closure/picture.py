@@ -51,4 +51,4 @@ def _draw(axes, rows, title) -> None:  # type: ignore[no-untyped-def]
         axes.plot([index, index], [low, high], color=colour, linewidth=1.2)
         axes.plot(index, value, "o" if inside else "s", color=colour, markersize=3.2)
     axes.axhline(0.0, color="0.25", linewidth=0.8)
-    axes.set_title(f"{title}: 95 % interval holds the truth in {covered} of {len(rows)}")
+    axes.set_title(f"{title}\n95 % interval holds the truth in {covered} of {len(rows)}")
