@@ -47,10 +47,10 @@ FloatArray = NDArray[np.float64]
 
 LEAST_FIT_PROBABILITY = 0.01
 LEAST_ODDS = 10.0
-LEAST_PAIR_ODDS, CLEAR_ODDS = 5.0, 1e4
+LEAST_PAIR_ODDS, CLEAR_ODDS = 100.0, 1e4
 LEAST_SHARE, LEAST_PAIR_SHARE = 3e-3, 1e-1
 """A slip (a pair of them) is listed if it is at least this probable beside the best one."""
-SINGLES_SHARE, PAIRS_SHARE, ANYTHING_SHARE = 0.85, 0.1, 0.05
+SINGLES_SHARE, PAIRS_SHARE, ANYTHING_SHARE = 0.75, 0.1, 0.15
 AGREEMENT_PROBABILITY = 0.05
 
 WORDINGS: dict[str, Wording] = {

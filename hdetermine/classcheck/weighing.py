@@ -59,7 +59,7 @@ ORDINARY_WITHOUT_CUTOFFS = _grid((0.002, 0.007, 0.02), (0.002, 0.007, 0.015), (0
 """For a claim of h alone, where the arithmetic cannot be followed."""
 COARSE = _grid((0.004, 0.015), (0.003, 0.01), (0.001, 0.005))
 """A thinner grid for combinations of two slips."""
-ANYTHING = _grid((0.01, 0.1), (0.05, 0.2, 1.0, 5.0), (0.01, 0.2, 5.0))
+ANYTHING = _grid((0.003, 0.02, 0.1), (0.003, 0.05, 0.3, 2.0, 10.0), (0.01, 0.3, 2.0, 30.0))
 """A mistake that no catalogue foresees."""
 STATED_ONLY = _grid((0.001,), (0.001,), (0.001,))
 """For a claim against itself: its cutoffs are what it says they are."""
