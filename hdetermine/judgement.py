@@ -39,6 +39,17 @@ IN_U = "difference / its u"
 BIRGE = "Birge ratio"
 
 
+def e_number(
+    value: float, expanded: float, reference: float, reference_expanded: float = 0.0
+) -> float:
+    """E_n of a value against a reference, both with expanded uncertainties.
+
+    E_n = (x - X)/sqrt(U_x^2 + U_X^2); agreement up to 1 in magnitude (ISO 13528:2022, 9.7,
+    from memory).
+    """
+    return (value - reference) / math.hypot(expanded, reference_expanded)
+
+
 def compare(h: PlanckValue) -> Comparison:
     """Compare the result with the exact SI value.
 
@@ -46,7 +57,7 @@ def compare(h: PlanckValue) -> Comparison:
     memory).
     """
     difference = h.value_J_s - PLANCK_CONSTANT_J_S
-    e_n = difference / h.expanded_uncertainty_J_s
+    e_n = e_number(h.value_J_s, h.expanded_uncertainty_J_s, PLANCK_CONSTANT_J_S)
     agrees = abs(e_n) <= 1.0
     return Comparison(
         reference_J_s=PLANCK_CONSTANT_J_S,
