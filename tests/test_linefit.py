@@ -6,9 +6,9 @@ import numpy as np
 import pytest
 from simulated import TRUTH, simulated, voltages
 
-from hdetermine.inference.features import covered, features
+from hdetermine.inference.features import absorption_angles_deg, covered, features
 from hdetermine.inference.linefit import fit_lines, search_zero
-from hdetermine.inference.linesearch import scan_features
+from hdetermine.inference.linesearch import absorption_edges, scan_features
 
 SPACING = {"NaCl": 282.01, "LiF": 201.35}
 
@@ -93,7 +93,12 @@ def fitted(run, guess):
     counter = run.apparatus.counter
     (scan,) = run.scans
     return fit_lines(
-        scan, scan_features(run, scan), guess, counter.dead_time_us.value, counter.dead_time_model
+        scan,
+        scan_features(run, scan),
+        guess,
+        counter.dead_time_us.value,
+        counter.dead_time_model,
+        absorption_edges(run),
     )
 
 
@@ -140,6 +145,36 @@ def test_the_form_of_the_kernel_is_told(kernel, low, high):
     strongest = found["Cu K-L2,3"]
     assert low <= strongest.triangular_fraction <= high
     assert strongest.triangular_fraction_u < 0.2
+
+
+def test_absorption_angles():
+    """K edge of Zr: 17 998 eV, 68.888 pm (xraydb); of Na and Cl nothing is tabulated."""
+    (zirconium,) = absorption_angles_deg(("Na", "Cl", "Zr"), 282.01, 0.0)
+    assert zirconium == pytest.approx(math.degrees(math.asin(68.888 / 564.02)), abs=1e-3)
+    assert absorption_angles_deg(("Ca",), 100.0, 0.0) == ()  # out of reach
+
+
+@pytest.mark.parametrize("depth", [0.5, 1.5])
+def test_the_edge_of_a_filter_does_not_widen_the_lines(depth):
+    """Zirconium before molybdenum: its absorption edge stands between the K-M and K-L lines."""
+    pulls = []
+    for seed in (1, 2, 3):
+        run, simulation = simulated(
+            voltages(35, dwell_s=10.0),
+            {**TRUTH, "from_deg": 5.0, "filter_depth": depth},
+            seed,
+            tube={"filter": "Zr"},
+        )
+        truth = simulation.truth
+        line = next(one for one in fitted(run, truth.zero_deg) if "K-L2,3" in one.feature.label)
+        pulls.append(
+            (
+                (line.shift_deg - truth.zero_deg) / line.shift_u_deg,
+                (line.fwhm_deg - truth.resolution_deg) / line.fwhm_u_deg,
+            )
+        )
+    assert np.all(np.abs(pulls) < 4.0)
+    assert np.all(np.abs(np.mean(pulls, axis=0)) < 2.0)
 
 
 def test_a_weak_line_knows_less_than_a_strong_one():

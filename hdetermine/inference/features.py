@@ -1,4 +1,4 @@
-"""Features: groups of characteristic lines in one order, where they should stand."""
+"""Features of the spectrum: characteristic lines in each order, and absorption edges."""
 
 from __future__ import annotations
 
@@ -6,7 +6,7 @@ import math
 from dataclasses import dataclass
 
 from hdetermine.physics.bragg import glancing_angle_deg
-from hdetermine.physics.lines import LineGroup, excited_groups
+from hdetermine.physics.lines import K_EDGE_pm, LineGroup, excited_groups
 from hdetermine.records.scan import Scan
 
 ORDERS = (1, 2, 3)
@@ -79,3 +79,15 @@ def covered(
     low = scan.reading_deg[0] + fwhm_deg
     high = scan.reading_deg[-1] - fwhm_deg
     return tuple(f for f in every if low < f.angle_deg + zero_deg < high)
+
+
+def absorption_angles_deg(
+    elements: tuple[str, ...], spacing_pm: float, refraction: float
+) -> tuple[float, ...]:
+    """True angles of the K absorption edges of some elements, first order, degrees.
+
+    Unknown elements, and edges out of the crystal's reach, are passed over.
+    """
+    wavelengths = [K_EDGE_pm[element] for element in elements if element in K_EDGE_pm]
+    angles = [float(glancing_angle_deg(one, spacing_pm, refraction)) for one in wavelengths]
+    return tuple(angle for angle in angles if math.isfinite(angle))

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from hdetermine.inference.edgefamily import Obstacle, best_start, windows
 from hdetermine.inference.edgemodel import EdgeFit, LineTemplate, Surroundings
 from hdetermine.inference.edgesearch import search_edge
-from hdetermine.inference.linesearch import energy_eV, scan_features
+from hdetermine.inference.linesearch import absorption_edges, energy_eV, scan_features
 from hdetermine.inference.refusals import (
     dropouts,
     insignificant,
@@ -21,9 +21,6 @@ from hdetermine.inference.refusals import (
     saturated,
 )
 from hdetermine.inference.smearing import Kernel
-from hdetermine.inference.spacing import crystal_spacing_pm
-from hdetermine.physics.bragg import glancing_angle_deg
-from hdetermine.physics.lines import K_EDGE_pm
 from hdetermine.records.results import AngleScale
 from hdetermine.records.run import Run
 from hdetermine.records.scan import Scan
@@ -61,7 +58,6 @@ def surroundings(run: Run, scale: AngleScale, scan: Scan) -> Surroundings:
 def _obstacles(run: Run, scale: AngleScale, scan: Scan) -> tuple[Obstacle, ...]:
     """Excited lines and absorption edges, as readings, by angle."""
     width = scale.resolution.value
-    crystal = run.apparatus.crystal
     found = []
     for feature in scan_features(run, scan):
         centres = [angle for angle, _, _ in feature.components]
@@ -69,18 +65,10 @@ def _obstacles(run: Run, scale: AngleScale, scan: Scan) -> tuple[Obstacle, ...]:
         low = min(centres) + scale.zero.value - LINE_REACH_WIDTHS * width
         high = max(centres) + scale.zero.value + LINE_REACH_WIDTHS * width
         found.append(Obstacle(low, high, template))
-    absorbers = (*crystal.elements, run.apparatus.tube.filter)
-    for element in absorbers:
-        if element in K_EDGE_pm:
-            angle = float(
-                glancing_angle_deg(
-                    K_EDGE_pm[element], crystal_spacing_pm(crystal), crystal.refraction.value
-                )
-            )
-            if math.isfinite(angle):
-                reading = angle + scale.zero.value
-                reach = ABSORPTION_REACH_WIDTHS * width
-                found.append(Obstacle(reading - reach, reading + reach, None))
+    for angle in absorption_edges(run):
+        reading = angle + scale.zero.value
+        reach = ABSORPTION_REACH_WIDTHS * width
+        found.append(Obstacle(reading - reach, reading + reach, None))
     return tuple(sorted(found, key=lambda obstacle: obstacle.from_deg))
 
 

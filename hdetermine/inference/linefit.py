@@ -13,10 +13,11 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import ndtr
 
 from hdetermine.inference.features import Feature, covered
 from hdetermine.inference.scoring import Maximum, maximise
-from hdetermine.inference.smearing import Kernel
+from hdetermine.inference.smearing import FWHM_PER_SIGMA, Kernel
 from hdetermine.physics.counting import recorded_rate, recorded_slope
 from hdetermine.records.apparatus import DeadTimeModel
 from hdetermine.records.scan import Scan
@@ -30,6 +31,7 @@ _LEAST_LOOK = 7
 SIGNIFICANT = 8.0  # amplitude over its standard uncertainty
 _LOCAL = 6  # position, log width, kernel, and level, slope and bend of the log background
 _BACKGROUND_U = (3.0, 0.7)  # weak priors of slope and bend over half the window
+_STEP_U = 2.0  # weak prior of the logarithm of an absorption edge's step
 _WIDEST_DEG = 0.8
 # Prior of the kernel's form: a rectangular distribution between Gaussian and triangle.
 KERNEL_CENTRE, KERNEL_U = 0.5, 0.29
@@ -122,6 +124,7 @@ def fit_lines(
     zero_deg: float,
     dead_time_us: float,
     dead_time_model: DeadTimeModel,
+    absorption_deg: tuple[float, ...] = (),
 ) -> tuple[FittedLine, ...]:
     """Fit the lines that a scan covers.
 
@@ -135,6 +138,8 @@ def fit_lines(
         First guess of the zero offset.
     dead_time_us, dead_time_model : float, str
         Of the counter.
+    absorption_deg : tuple of float
+        True angles of absorption edges, where the background has a step.
 
     Returns
     -------
@@ -147,12 +152,15 @@ def fit_lines(
     for _ in range(2):
         fits = []
         for cluster in _clusters(inside, reach):
-            fit = _settle_width(scan, cluster, zero_deg, dead_time_us, dead_time_model)
+            fit = _settle_width(
+                scan, cluster, zero_deg, dead_time_us, dead_time_model, absorption_deg
+            )
             if fit is not None and fit.converged:
                 fits.append((cluster, fit))
         # The width of a line that is hardly seen says nothing.
         widest = max(
-            (_width(fit) for _, fit in fits if _significance(fit) > SIGNIFICANT), default=0.0
+            (_width(fit) for cluster, fit in fits if _significance(cluster, fit) > SIGNIFICANT),
+            default=0.0,
         )
         if _REACH_WIDTHS * min(widest, _WIDEST_DEG) <= reach:
             break
@@ -165,9 +173,14 @@ def _width(fit: Maximum) -> float:
     return math.exp(float(np.clip(fit.parameters[1], -4.0, 1.0)))
 
 
-def _significance(fit: Maximum) -> float:
+def _strongest(cluster: tuple[Feature, ...], fit: Maximum) -> int:
+    """Place of the strongest line of a cluster among its lines, which come last."""
+    return int(np.argmax(fit.parameters[-len(cluster) :]))
+
+
+def _significance(cluster: tuple[Feature, ...], fit: Maximum) -> float:
     """Amplitude of the strongest line over its standard uncertainty."""
-    strongest = _LOCAL + int(np.argmax(fit.parameters[_LOCAL:]))
+    strongest = _strongest(cluster, fit) - len(cluster)
     return 1.0 / max(math.sqrt(max(float(fit.covariance()[strongest, strongest]), 0.0)), 1e-6)
 
 
@@ -177,12 +190,15 @@ def _settle_width(
     zero_deg: float,
     dead_time_us: float,
     dead_time_model: DeadTimeModel,
+    absorption_deg: tuple[float, ...],
 ) -> Maximum | None:
     """Fit a cluster in a window that suits the width it finds."""
     width = _width_guess(scan, cluster, zero_deg)
     fit = None
     for _ in range(3):
-        fit = _fit_cluster(scan, cluster, zero_deg, width, dead_time_us, dead_time_model)
+        fit = _fit_cluster(
+            scan, cluster, zero_deg, width, dead_time_us, dead_time_model, absorption_deg
+        )
         if fit is None or abs(_width(fit) / width - 1.0) < 0.15:
             break
         width = min(max(_width(fit), 0.5 * width), 2.0 * width)
@@ -208,17 +224,22 @@ def _fit_cluster(
     width_deg: float,
     dead_time_us: float,
     dead_time_model: DeadTimeModel,
+    absorption_deg: tuple[float, ...],
 ) -> Maximum | None:
     reach = max(_REACH_WIDTHS * width_deg, 4.0 * scan.step_deg)
     low, high = cluster[0].angle_deg + zero_deg - reach, cluster[-1].angle_deg + zero_deg + reach
     take = (scan.reading_deg >= low) & (scan.reading_deg <= high)
-    size = _LOCAL + len(cluster)
+    steps = np.array([angle for angle in absorption_deg if low < angle + zero_deg < high])
+    local = _LOCAL + steps.size
+    size = local + len(cluster)
     if int(take.sum()) < size + 1:
         return None
     readings, dwell = scan.reading_deg[take], scan.dwell_s[take]
     counts = scan.counts[take].astype(float)
     half = 0.5 * (readings[-1] - readings[0])
     powers = ((readings - readings[0]) / half - 1.0) ** np.arange(3)[:, np.newaxis]
+    # Part of the smeared step that a reading is past.
+    past = ndtr((readings - zero_deg - steps[:, np.newaxis]) * FWHM_PER_SIGMA / width_deg)
     dead_time_s = dead_time_us * 1e-6
 
     def profiles(place: FloatArray) -> FloatArray:
@@ -226,8 +247,10 @@ def _fit_cluster(
         return np.stack([_feature_profile(readings - place[0], f, kernel) for f in cluster])
 
     def model(parameters: FloatArray) -> tuple[FloatArray, FloatArray]:
-        base = np.exp(np.clip(parameters[3:_LOCAL] @ powers, -30.0, 30.0))
-        strength = np.exp(np.clip(parameters[_LOCAL:], -30.0, 30.0))
+        jump = np.exp(np.clip(parameters[_LOCAL:local], -30.0, 30.0))[:, np.newaxis]
+        gate = 1.0 + (jump - 1.0) * past
+        base = np.exp(np.clip(parameters[3:_LOCAL] @ powers, -30.0, 30.0)) * gate.prod(axis=0)
+        strength = np.exp(np.clip(parameters[local:], -30.0, 30.0))
         shapes = profiles(parameters[:3])
         rate = base + strength @ shapes
         columns = []
@@ -236,7 +259,8 @@ def _fit_cluster(
             step[i] = 1e-4
             ahead, behind = profiles(parameters[:3] + step), profiles(parameters[:3] - step)
             columns.append(strength @ (ahead - behind) / 2e-4)
-        columns += [*(base * powers), *(strength[:, np.newaxis] * shapes)]
+        columns += [*(base * powers), *(base * jump * past / gate)]
+        columns += [*(strength[:, np.newaxis] * shapes)]
         slope = dwell * recorded_slope(rate, dead_time_s, dead_time_model)
         expected = dwell * recorded_rate(rate, dead_time_s, dead_time_model)
         return np.maximum(expected, 1e-9), slope[:, np.newaxis] * np.stack(columns, axis=1)
@@ -244,6 +268,7 @@ def _fit_cluster(
     precision, centre = np.zeros(size), np.zeros(size)
     precision[2], centre[2] = KERNEL_U**-2, KERNEL_CENTRE
     precision[4:_LOCAL] = np.array(_BACKGROUND_U) ** -2.0
+    precision[_LOCAL:local] = _STEP_U**-2
 
     def prior(parameters: FloatArray) -> tuple[float, FloatArray, FloatArray]:
         gradient = precision * (parameters - centre)
@@ -252,10 +277,11 @@ def _fit_cluster(
     floor = max(float(np.min(counts / dwell)), 0.2 / float(dwell[0]))
     height = max(float(np.max(counts / dwell)) - floor, floor)
     start = np.array(
-        [zero_deg, math.log(width_deg), 0.5, math.log(floor), 0.0, 0.0]
+        [zero_deg, math.log(width_deg), 0.5, math.log(floor), 0.0, 0.0, *(0.0 * steps)]
         + [math.log(height * width_deg)] * len(cluster)
     )
-    limits = np.array([0.5 * width_deg, 0.4, 0.3, 1.0, 1.0, 1.0] + [1.0] * len(cluster))
+    limits = np.ones(size)
+    limits[:3] = 0.5 * width_deg, 0.4, 0.3
     least, most = np.full(size, -np.inf), np.full(size, np.inf)
     least[2], most[2] = 0.0, 1.0
     return maximise(counts, model, prior, start, limits, bounds=(least, most))
@@ -267,8 +293,7 @@ def _harvest(scan: str, cluster: tuple[Feature, ...], fit: Maximum) -> Iterator[
     freedom = max(fit.expected.size - fit.parameters.size, 1)
     misfit = max(math.sqrt(fit.deviance / freedom), 1.0)
     width = math.exp(float(fit.parameters[1]))
-    strongest = int(np.argmax(fit.parameters[_LOCAL:]))
-    feature = cluster[strongest]
+    feature = cluster[_strongest(cluster, fit)]
     yield FittedLine(
         scan=scan,
         feature=feature,
@@ -278,6 +303,6 @@ def _harvest(scan: str, cluster: tuple[Feature, ...], fit: Maximum) -> Iterator[
         fwhm_u_deg=width * float(u[1]) * misfit,
         triangular_fraction=float(fit.parameters[2]),
         triangular_fraction_u=float(u[2]) * misfit,
-        significance=_significance(fit),
+        significance=_significance(cluster, fit),
         misfit=misfit,
     )

@@ -8,7 +8,7 @@ from dataclasses import replace
 import numpy as np
 
 from hdetermine.errors import InputError
-from hdetermine.inference.features import Feature, covered, features
+from hdetermine.inference.features import Feature, absorption_angles_deg, covered, features
 from hdetermine.inference.linefit import SIGNIFICANT, FittedLine, fit_lines, search_zero
 from hdetermine.inference.spacing import crystal_spacing_pm
 from hdetermine.records.apparatus import Apparatus
@@ -43,6 +43,16 @@ def scan_features(run: Run, scan: Scan) -> tuple[Feature, ...]:
     )
 
 
+def absorption_edges(run: Run) -> tuple[float, ...]:
+    """True angles of the absorption edges of crystal and filter, degrees."""
+    crystal = run.apparatus.crystal
+    return absorption_angles_deg(
+        (*crystal.elements, run.apparatus.tube.filter),
+        crystal_spacing_pm(crystal),
+        crystal.refraction.value,
+    )
+
+
 def find_lines(run: Run) -> tuple[FittedLine, ...]:
     """Fit every line that any scan of the run covers.
 
@@ -72,6 +82,7 @@ def find_lines(run: Run) -> tuple[FittedLine, ...]:
             zero,
             counter.dead_time_us.value,
             counter.dead_time_model,
+            absorption_edges(run),
         )
         found.extend(line for line in fitted if _sound(line, scan, zero))
     return tuple(found)
