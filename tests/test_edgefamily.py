@@ -149,8 +149,9 @@ def test_points_that_dropped_out_are_in_no_window():
         ((Obstacle(6.2, 6.9, None),), {0}),  # an absorption edge is never modelled
         ((Obstacle(5.9, 6.3, OTHER_LINE), Obstacle(6.2, 6.9, LINE)), {0, 2}),
         ((Obstacle(5.9, 6.3, OTHER_LINE), Obstacle(6.8, 7.2, LINE)), {0, 1}),
+        ((Obstacle(5.9, 6.3, OTHER_LINE), Obstacle(6.1, 6.5, None)), {0}),
     ],
-    ids=["line", "absorption", "two lines as one", "two lines apart"],
+    ids=["line", "absorption", "two lines as one", "two lines apart", "line on absorption"],
 )
 def test_obstacles_end_the_windows_or_are_modelled(obstacles, lines):
     family = members(scan_of(), obstacles)

@@ -187,6 +187,9 @@ def test_a_background_without_counts_stays_defined():
     assert found.maximum.converged
     assert abs(found.reading_deg - EDGE_DEG) < 4.0 * found.reading_u_deg
     assert np.all(np.isfinite(found.maximum.covariance()))
+    # The prior level^0.1 is worth a tenth of a count, spread over the points without continuum.
+    dark = background_rate(full, found.maximum.parameters)[0] * full.dwell_s
+    assert 0.03 < dark[full.reading_deg < EDGE_DEG - 0.3].sum() < 0.2
 
 
 def test_pulls_of_many_fits():

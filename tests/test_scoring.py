@@ -150,6 +150,24 @@ def test_a_flat_likelihood_does_not_break_it():
     assert found.parameters[1] == pytest.approx(3.0)
 
 
+def test_a_kink_at_the_maximum_is_no_failure():
+    """A tent whose top stands on a point, as that of a triangular kernel may: no step gains."""
+    x = np.linspace(-1.0, 1.0, 9)
+
+    def tent(parameters):
+        distance = x - parameters[0]
+        mean = 200.0 * np.maximum(1.0 - np.abs(distance), 0.0) + 5.0
+        return mean, (200.0 * np.sign(distance) * (np.abs(distance) < 1.0))[:, np.newaxis]
+
+    counts = tent(np.array([0.0]))[0]
+    counts[4] += 25.0  # more on the top than any tent explains
+    for start in (0.03, -0.08):
+        found = maximise(counts, tent, flat, np.array([start]), np.full(1, 0.1))
+        assert found.converged
+        u = float(np.sqrt(found.covariance()[0, 0]))
+        assert found.parameters[0] == pytest.approx(0.0, abs=0.3 * u)
+
+
 @pytest.mark.parametrize("seed", range(6))
 def test_against_a_general_minimiser(seed):
     """A line on a decaying background: iminuit on the same deviance."""
