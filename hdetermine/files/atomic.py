@@ -11,9 +11,9 @@ Several files cannot be replaced by one step of a file system, so the set is wri
 A process that is killed before the commit leaves the earlier outputs and a staged folder that
 the next run clears. One that is killed after it leaves a ready folder, and the next run first
 finishes those moves. SIGINT and SIGTERM are looked at between files: before the commit they
-clear up and end the work, after it they come too late. A sub-folder of the outputs' own, not a
-swap of whole folders, because the folder may hold files of other people, and may be the working
-directory of a shell. Files of other names are never touched.
+clear up and end the work, after it they wait until the set stands. A sub-folder of the outputs'
+own, not a swap of whole folders, because the folder may hold files of other people, and may be
+the working directory of a shell. Files of other names are never touched.
 """
 
 from __future__ import annotations
@@ -61,7 +61,8 @@ def write_outputs(
         If the folder cannot be written, its disk is full, or another process keeps writing to
         it; the earlier files then stand as they were.
     KeyboardInterrupt
-        If SIGINT or SIGTERM came before the commit; nothing stray is left.
+        If SIGINT or SIGTERM came before the commit; nothing stray is left. One that came after
+        it is handed on to its own handler when the new set stands.
     """
     target = Path(folder)
     for name in (*outputs, *retired):
@@ -86,13 +87,13 @@ def write_outputs(
 
 
 class _Interruption:
-    """Whether a signal asked to stop."""
+    """The signal that asked to stop, if one did."""
 
     def __init__(self) -> None:
-        self.came = False
+        self.number: int | None = None
 
     def raise_if_set(self) -> None:
-        if self.came:
+        if self.number is not None:
             raise KeyboardInterrupt
 
 
@@ -104,8 +105,8 @@ def _held_signals() -> Iterator[_Interruption]:
         yield interruption  # Python delivers signals to the main thread only
         return
 
-    def note(_number: int, _frame: FrameType | None) -> None:
-        interruption.came = True
+    def note(number: int, _frame: FrameType | None) -> None:
+        interruption.number = number
 
     earlier = {}
     try:
@@ -116,6 +117,8 @@ def _held_signals() -> Iterator[_Interruption]:
     finally:
         for number, handler in earlier.items():
             signal.signal(number, handler)
+    if interruption.number is not None:
+        signal.raise_signal(interruption.number)
 
 
 @contextmanager
