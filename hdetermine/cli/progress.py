@@ -22,9 +22,11 @@ def working(title: str) -> Iterator[Progress]:
 
     console = Console(stderr=True)
     columns = (TextColumn("{task.description}"), BarColumn(), TimeElapsedColumn())
-    # Disabled, or it would end with an empty line in a file or a pipe.
-    off = not console.is_terminal
-    with Progress(*columns, console=console, transient=True, disable=off) as bar:
+    if not console.is_terminal:
+        # Even a disabled bar may end with an empty line in a file or a pipe.
+        yield lambda _stage, _done, _total: None
+        return
+    with Progress(*columns, console=console, transient=True) as bar:
         task = bar.add_task(title, total=None)
 
         def report(stage: str, done: int, total: int) -> None:
