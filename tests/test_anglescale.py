@@ -8,7 +8,7 @@ import pytest
 from simulated import TRUTH, five_voltages, simulated, voltages
 
 from hdetermine.inference import measurement as names
-from hdetermine.inference.anglescale import angle_scale
+from hdetermine.inference.anglescale import _inflation, angle_scale
 from hdetermine.inference.spacing import (
     crystal_spacing_pm,
     free_fit,
@@ -131,6 +131,37 @@ def test_zero_answers_to_the_spacing_as_refits_do():
     assert slope == pytest.approx(told, rel=0.05)
 
 
+def test_a_loose_spacing_loosens_the_zero():
+    """Lines of one order: all of the spacing's uncertainty comes back as one of the zero."""
+    run, _ = five_voltages()
+    crystal = run.apparatus.crystal
+    u = {}
+    for stated in (1e-4, 0.02, 0.3):
+        loose = replace(crystal, spacing_pm=crystal.spacing_pm.with_uncertainty(stated))
+        scale = angle_scale(replace(run, apparatus=replace(run.apparatus, crystal=loose)))
+        assert scale.zero_from == "lines, spacing as stated"
+        u[stated] = scale.zero.standard_uncertainty
+    # K-L3 at 7.22 degrees: d(theta)/d(ln d) is -tan(theta), 0.0257 degrees a pm.
+    assert u[0.3] == pytest.approx(math.hypot(u[1e-4], 0.3 * 0.0257), rel=0.05)
+    assert u[0.02] == pytest.approx(math.hypot(u[1e-4], 0.02 * 0.0257), rel=0.05)
+
+
+def test_scatter_of_lines_and_stated_spacing():
+    """Hand-worked: lines want three standard uncertainties of the spacing, stated as well as that.
+
+    The compromise leaves 1.5 to each side: chi-square 4.5, one degree of freedom.
+    """
+    by_spacing = np.array([-10.0, -60.0])
+    design = np.stack([np.ones(2), by_spacing], axis=1)
+    weight = np.full(2, 1e6)
+    u_rho = math.sqrt(2.0) * 1e-3 / 50.0
+    shift = 0.05 + 3.0 * u_rho * by_spacing
+    assert _inflation(design, shift, weight, u_rho**2) == pytest.approx(4.5, rel=1e-6)
+    # A loosely stated spacing gives way, and nothing scatters.
+    assert _inflation(design, shift, weight, 1.0) == 1.0
+    assert _inflation(design[:1], shift[:1], weight[:1], 1.0) == 1.0
+
+
 def test_zero_answers_to_the_reference_wavelengths():
     """A relative change of all wavelengths is one of the spacing with the other sign."""
     run, _ = five_voltages()
@@ -220,6 +251,26 @@ def test_without_lines_the_run_sheet_counts(stated):
     else:
         assert math.isinf(scale.resolution.standard_uncertainty)
         assert scale.resolution_from == "edges"
+
+
+def test_the_prior_of_the_kernel_is_counted_once(monkeypatch):
+    """Four lines that each say 0.9 with the weight of the prior (0.5 +- 0.29): 4.1/5 together."""
+    from hdetermine.inference.linefit import FittedLine
+    from hdetermine.inference.linesearch import scan_features
+
+    run, _ = five_voltages()
+    (feature,) = [f for f in scan_features(run, run.scans[-1]) if f.label == "Mo K-L2,3"]
+    # Each fit carried the prior: its answer is the mean of 0.9 and 0.5, its u smaller by sqrt 2.
+    lines = tuple(
+        FittedLine("u38", feature, 0.07, 0.003, 0.25, 0.01, 0.7, 0.29 / math.sqrt(2), 50.0, 1.0)
+        for _ in range(4)
+    )
+    monkeypatch.setattr("hdetermine.inference.anglescale.find_lines", lambda _: lines)
+    kernel = angle_scale(run).kernel
+    assert kernel.value == pytest.approx((4 * 0.9 + 0.5) / 5, abs=0.01)
+    assert kernel.standard_uncertainty == pytest.approx(
+        math.hypot(0.29 / math.sqrt(5.0), 0.05), rel=0.02
+    )
 
 
 def crystal():

@@ -177,6 +177,17 @@ def test_the_edge_of_a_filter_does_not_widen_the_lines(depth):
     assert np.all(np.abs(np.mean(pulls, axis=0)) < 2.0)
 
 
+@pytest.mark.parametrize("seed", [9, 10, 11])
+def test_a_line_hardly_seen_does_not_join_its_strong_neighbours(seed):
+    """The weak second order of K-M may be fitted broad; the first orders stay apart."""
+    run, _ = simulated(
+        voltages(35, dwell_s=5.0),
+        {**TRUTH, "from_deg": 4.0, "to_deg": 17.0, "resolution_deg": 0.14, "step_deg": 0.05},
+        seed,
+    )
+    assert {"Mo K-M2,3", "Mo K-L2,3"} <= {line.feature.label for line in fitted(run, 0.07)}
+
+
 def test_a_weak_line_knows_less_than_a_strong_one():
     run, simulation = run_of("Cu", "LiF", LINES_TRUTH, 5)
     found = {line.feature.label: line for line in fitted(run, simulation.truth.zero_deg)}

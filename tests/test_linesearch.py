@@ -9,7 +9,13 @@ from simulated import TRUTH, simulated, voltages
 from hdetermine.errors import InputError
 from hdetermine.inference.features import features
 from hdetermine.inference.linefit import FittedLine
-from hdetermine.inference.linesearch import energy_eV, find_lines, line_measures, select_lines
+from hdetermine.inference.linesearch import (
+    energy_eV,
+    find_lines,
+    line_measures,
+    scan_features,
+    select_lines,
+)
 
 LINES_TRUTH = {**TRUTH, "to_deg": 9.5}
 
@@ -31,14 +37,21 @@ def test_a_scan_without_lines_in_range():
     assert find_lines(run) == ()
 
 
-def test_a_line_cut_by_the_end_of_the_scan_is_not_used():
-    """K-L3 reads 7.29 degrees; the scan ends inside the line."""
+@pytest.mark.parametrize(("kV", "looked_for"), [(19.0, 0), (20.1, 0), (20.3, 2), (35.0, 2)])
+def test_a_voltage_just_above_the_threshold_shows_nothing(kV, looked_for):
+    """Mo K: 20 000 eV; so little above it the lines are too weak to be looked for."""
+    run, _ = simulated(voltages(kV), LINES_TRUTH, seed=4)
+    first = [f for f in scan_features(run, run.scans[0]) if f.order == 1]
+    assert len(first) == looked_for
+
+
+@pytest.mark.parametrize(("end", "used"), [(7.45, False), (7.9, True)])
+def test_a_line_cut_by_the_end_of_the_scan_is_not_used(end, used):
+    """K-L3 reads 7.29 degrees, and the line is 0.25 degrees wide."""
     run, _ = simulated(
-        voltages(35),
-        {**LINES_TRUTH, "from_deg": 6.9, "to_deg": 7.4, "step_deg": 0.05},
-        seed=4,
+        voltages(35), {**LINES_TRUTH, "from_deg": 5.5, "to_deg": end, "step_deg": 0.02}, seed=4
     )
-    assert find_lines(run) == ()
+    assert any(line.feature.group.name == "K-L2,3" for line in find_lines(run)) is used
 
 
 def test_energy_of_a_displayed_voltage():
