@@ -184,7 +184,8 @@ def _comparison(found: GroupFinding) -> Table | None:
         "−1 and 1 they agree."
     )
     return table(
-        "planck", "Planck constant", ("source", "h / J s", "u(h)/h", "deviation from the SI value", "Eₙ"),
+        "planck", "Planck constant",
+        ("source", "h / J s", "u(h)/h", "deviation from the SI value", "Eₙ"),
         rows, numeric=(1, 2, 3, 4), note=note,
     )  # fmt: skip
 
