@@ -19,6 +19,7 @@ from scipy.special import chdtrc, logsumexp
 from hdetermine.classcheck.alignment import UNSEEN_STEP, Alignment
 from hdetermine.classcheck.arithmetic import (
     PROPER,
+    RIGHT,
     Combination,
     Prediction,
     Variant,
@@ -30,6 +31,7 @@ from hdetermine.classcheck.arithmetic import (
 FloatArray = NDArray[np.float64]
 
 WITHOUT_INTERCEPT = (mean_of_products, line_through_origin)
+HOPELESS_CHI2 = 200.0
 LARGEST_LOG = 700.0
 """Beyond the exponential of this no float reaches."""
 LARGEST_STEP = 0.3
@@ -131,6 +133,8 @@ def weigh(
     for combine in combinations:
         prediction = _predict(alignment, variant, combine)
         if prediction is not None:
+            if variant is not RIGHT and _hopeless(alignment, prediction, shifts, readings, grid):
+                continue
             pieces += [
                 _one(alignment, prediction, shifts, single_u, rounding_u, grid)
                 for single_u, rounding_u in readings
@@ -180,6 +184,25 @@ def _readings(alignment: Alignment, own: FloatArray) -> list[tuple[FloatArray, F
     rest = rounding.copy()
     rest[:angles] = UNSEEN_STEP
     return [*apart, (as_written, rest)]
+
+
+def _hopeless(
+    alignment: Alignment,
+    prediction: Prediction,
+    shifts: FloatArray,
+    readings: list[tuple[FloatArray, FloatArray]],
+    grid: Sequence[Scatter],
+) -> bool:
+    """Whether a prediction is so far off that no scatter of the grid brings it near: saves time."""
+    widest = Scatter(
+        max(scatter.single for scatter in grid),
+        max(scatter.common for scatter in grid),
+        max(scatter.arithmetic for scatter in grid),
+    )
+    covariance = _covariances(alignment, prediction, *readings[0], [widest])[0]
+    residual = alignment.log_values - prediction.log_values - shifts
+    chi2 = np.sum(np.linalg.solve(np.linalg.cholesky(covariance), residual.T) ** 2, axis=0)
+    return bool(np.min(chi2) > HOPELESS_CHI2 + 2.0 * residual.shape[1])
 
 
 def _predict(alignment: Alignment, variant: Variant, combine: Combination) -> Prediction | None:
