@@ -148,9 +148,11 @@ def test_the_form_of_the_kernel_is_told(kernel, low, high):
 
 
 def test_absorption_angles():
-    """K edge of Zr: 17 998 eV, 68.888 pm (xraydb); of Na and Cl nothing is tabulated."""
+    """K edges of Zr 68.888 pm and of Br 92.017 pm (xraydb); Na and Cl are not tabulated."""
     (zirconium,) = absorption_angles_deg(("Na", "Cl", "Zr"), 282.01, 0.0)
     assert zirconium == pytest.approx(math.degrees(math.asin(68.888 / 564.02)), abs=1e-3)
+    (bromine,) = absorption_angles_deg(("K", "Br"), 329.5, 0.0)
+    assert bromine == pytest.approx(math.degrees(math.asin(92.017 / 659.0)), abs=1e-3)
     assert absorption_angles_deg(("Ca",), 100.0, 0.0) == ()  # out of reach
 
 

@@ -152,6 +152,12 @@ def test_line_above_the_edge_is_modelled_or_the_scan_refused(molybdenum):
         assert "line" in cutoff.reason
 
 
+def test_width_of_the_edges_is_known_to_something(d):
+    """Edges with few counts tell their width badly, but not to a boundless uncertainty."""
+    assert 0.0 < d.angle_scale.edge_resolution_u_deg < 0.3
+    assert 0.1 < d.angle_scale.edge_resolution_deg < 1.0
+
+
 def test_lines_tell_the_zero(d):
     assert d.angle_scale.zero_from.startswith("lines")
     assert any(line.used for line in d.angle_scale.lines)
