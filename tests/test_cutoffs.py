@@ -229,6 +229,17 @@ def test_edges_and_lines_agree_on_the_width(found):
     assert 0.0 < scale.edge_resolution_u_deg < 0.3
 
 
+@pytest.mark.parametrize("seed", [3, 6])
+def test_a_width_that_brings_no_gain_is_not_boundless(seed):
+    """Few counts: the deviance hardly falls with a width of their own, and that says little."""
+    run, _ = simulated(
+        voltages(24, 29, 35, dwell_s=1.0), {**TRUTH, "resolution_deg": 0.3}, seed=seed
+    )
+    scale, _, _ = find_cutoffs(run, angle_scale(run))
+    assert 0.02 < scale.edge_resolution_u_deg < 0.1
+    assert abs(scale.edge_pull) < 1.0
+
+
 def test_edges_smeared_unlike_the_lines_are_fitted_with_their_own_width(found):
     """A supply whose voltage ripples smears the edges and leaves the lines alone."""
     run, _, scale, _ = found
