@@ -17,6 +17,8 @@ from hdetermine.inference.smearing import Kernel
 EDGE_DEG = 5.2
 # Two components of unequal strength with natural widths, true angles.
 LINE = LineTemplate(((6.35, 0.004, 1.0), (6.41, 0.004, 0.5)))
+# The same line just above the anode's own absorption edge.
+EDGED_LINE = LineTemplate(LINE.components, 6.22)
 OTHER_LINE = LineTemplate(((6.02, 0.003, 1.0),))
 
 
@@ -54,14 +56,21 @@ def window(background_terms=2, lines=(), *, step=0.1, low=3.6, high=6.8, dwell=1
 
 
 def parameters(
-    background_terms=2, lines=0, *, edge=EDGE_DEG, rate=6000.0, smooth=(1.0, 0.0), level=1.5
+    background_terms=2,
+    lines=0,
+    *,
+    edge=EDGE_DEG,
+    rate=6000.0,
+    smooth=(2.5, -0.5),
+    level=1.5,
+    jumps=(),
 ):
     """Parameters of `fit_edge`; `rate` is the amplitude of the continuum in 1/s."""
     bends = [-0.3, 0.15][: background_terms - 1]
     values = [edge, math.log(rate), *smooth, math.log(level), *bends]
     for i in range(lines):
         values += [math.log(120.0 / (i + 1)), 0.006 * (1 - 2 * i)]
-    return np.array(values)
+    return np.array([*values, *jumps])
 
 
 def counted(sketch: EdgeWindow, true, surroundings: Surroundings, seed=None) -> EdgeWindow:

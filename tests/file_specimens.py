@@ -46,6 +46,52 @@ def xlsx() -> bytes:
     return stream.getvalue()
 
 
+CLAIM_SHEET = """\
+schema = 1
+note = "read by two of us"
+
+[h]
+value = 6.55e-34
+unit = "J s"
+expanded = 0.08e-34
+k = 2
+
+[[cutoff]]
+tube_voltage_kV = 20.0
+wavelength_pm = 61.2
+
+[[cutoff]]
+tube_voltage_kV = 25.0
+glancing_angle_deg = 7.1
+"""
+CLAIM_TABLES: list[str] = [
+    "group,h,unit,u,wavelength 20 kV [pm],theta 25 kV [deg]\n"
+    "alder,6.55e-34,J s,0.04e-34,61.2,7.08\n"
+    "birch,4.13e-15,eV s,2e-17,61.8,\n"
+    "cedar,,,,62.0,7.15\n",
+    "# bench 3\ngroup;h [eV s];U;k;2 theta 20 kV [deg];wavelength 25 kV [nm]\n"
+    "alder;4,1e-15;0,1e-15;2;17,6;0,0497\n",
+]
+
+
+def claims_xlsx() -> bytes:
+    """The first table of claims as a spreadsheet."""
+    book = openpyxl.Workbook()
+    sheet = book.active
+    for line in CLAIM_TABLES[0].splitlines():
+        sheet.append([_cell(text) for text in line.split(",")])
+    stream = io.BytesIO()
+    book.save(stream)
+    return stream.getvalue()
+
+
+def _cell(text: str) -> str | float:
+    try:
+        return float(text)
+    except ValueError:
+        return text
+
+
 def ods() -> bytes:
     """The same as an OpenDocument spreadsheet."""
     document = OpenDocumentSpreadsheet()

@@ -5,7 +5,16 @@ from itertools import pairwise
 
 import numpy as np
 import pytest
-from edge_specimens import EDGE_DEG, LINE, OTHER_LINE, counted, given, parameters, window
+from edge_specimens import (
+    EDGE_DEG,
+    EDGED_LINE,
+    LINE,
+    OTHER_LINE,
+    counted,
+    given,
+    parameters,
+    window,
+)
 from scipy.integrate import quad
 from scipy.optimize import brentq
 
@@ -29,6 +38,9 @@ CASES = {
     "two lines": (3, (LINE, OTHER_LINE), {}),
     "Gaussian": (2, (LINE,), {"triangular_fraction": 0.0}),
     "triangular": (2, (LINE,), {"triangular_fraction": 1.0}),
+    "trapezium": (2, (), {"triangular_fraction": 1.4}),
+    "box": (2, (), {"triangular_fraction": 2.0}),
+    "own edge": (2, (EDGED_LINE,), {}),
     "narrow": (2, (), {"resolution_deg": 0.06}),
     "no excess": (2, (), {"excess": 0.0}),
 }
@@ -42,20 +54,22 @@ def by_the_book(readings, p, surroundings):
 
     def integrand(angle, centre):
         distance = angle - centre
-        kernel = (1.0 - mix) * math.exp(-0.5 * (distance / sigma) ** 2)
+        kernel = max(1.0 - mix, 0.0) * math.exp(-0.5 * (distance / sigma) ** 2)
         kernel /= sigma * math.sqrt(2.0 * math.pi)
-        kernel += mix * max(1.0 - abs(distance) / width, 0.0) / width
+        kernel += (1.0 - abs(mix - 1.0)) * max(1.0 - abs(distance) / width, 0.0) / width
+        kernel += max(mix - 1.0, 0.0) * (abs(distance) < 0.5 * width) / width
         ratio = math.sin(math.radians(angle)) / math.sin(math.radians(limit))
         x, log_ratio = ratio - 1.0, math.log(ratio)
         missing_keV = surroundings.energy_keV * (1.0 - 1.0 / ratio)
         shape = x / ratio**2
         shape *= 1.0 + surroundings.excess * math.exp(-missing_keV / surroundings.excess_energy_keV)
-        smooth = math.exp(p[1] + p[2] * log_ratio + p[3] * log_ratio**2)
+        bend = (ratio**3 - 1.0) / 3.0 - log_ratio
+        smooth = math.exp(p[1] + p[2] * log_ratio + p[3] * bend)
         return kernel * smooth * math.cos(math.radians(angle)) * shape
 
     rates = []
     for centre in readings - surroundings.zero_deg:
-        places = [centre + k * width for k in (-2.2, -1.0, 0.0, 1.0, 2.2)]
+        places = [centre + k * width for k in (-2.2, -1.0, -0.5, 0.0, 0.5, 1.0, 2.2)]
         ends = [max(place, limit) for place in places]
         rates.append(
             sum(
@@ -66,7 +80,11 @@ def by_the_book(readings, p, surroundings):
     return np.array(rates)
 
 
-@pytest.mark.parametrize("changes", [{}, {"triangular_fraction": 1.0}, {"excess": 0.0}], ids=str)
+@pytest.mark.parametrize(
+    "changes",
+    [{}, {"excess": 0.0}, *({"triangular_fraction": form} for form in (0.0, 1.0, 1.6, 2.0))],
+    ids=str,
+)
 def test_continuum_is_the_integral_of_the_docstring(changes):
     sketch = window(step=0.2)
     p = parameters(smooth=(2.0, -1.0))
@@ -107,11 +125,27 @@ def test_a_modelled_line_has_its_area_and_its_place():
     assert centre == pytest.approx((6.35 + 0.5 * 6.41) / 1.5 + 0.08 + 0.006, abs=2e-3)
 
 
+def test_the_continuum_steps_up_beyond_the_own_edge():
+    around = given(dead_time_us=0.0)
+    lines = parameters(lines=1, level=1e-9)
+    lines[-2] = -60.0
+    flat = expected_counts(window(lines=(LINE,)), lines, around)[0]
+    stepped = expected_counts(window(lines=(EDGED_LINE,)), np.array([*lines, 0.1]), around)[0]
+    readings = window().reading_deg
+    past = readings > 6.22 + 0.08 + 0.4
+    before = (readings > EDGE_DEG + 0.3) & (readings < 6.22 + 0.08 - 0.4)
+    np.testing.assert_allclose(stepped[past], 1.1 * flat[past], rtol=1e-3)
+    np.testing.assert_allclose(stepped[before], flat[before], rtol=1e-3)
+    at = int(np.argmin(np.abs(readings - 6.3)))
+    assert stepped[at] == pytest.approx(1.05 * flat[at], rel=1e-3)
+
+
 @pytest.mark.parametrize("case", CASES)
 def test_jacobian(case):
     terms, lines, changes = CASES[case]
     sketch = window(terms, lines)
-    p, around = parameters(terms, len(lines), smooth=(1.4, -0.6)), given(**changes)
+    around = given(**changes)
+    p = parameters(terms, len(lines), smooth=(1.4, -0.6), jumps=[0.1] * len(sketch.absorption_deg))
     _, jacobian = expected_counts(sketch, p, around)
     assert jacobian.shape == (sketch.counts.size, sketch.parameters)
     for column in range(p.size):
@@ -136,12 +170,14 @@ def test_a_limit_out_of_reach_gives_no_continuum(edge, seen):
 @pytest.mark.parametrize("case", CASES)
 def test_mean_counts_give_back_their_parameters(case):
     terms, lines, changes = CASES[case]
-    around, true = given(**changes), parameters(terms, len(lines))
-    # Flat priors where they can be, and lines where they are expected.
-    true[2 + 2 + terms + 1 :: 2] = 0.0
+    jumps = [0.06] * len(window(terms, lines).absorption_deg)
+    around, true = given(**changes), parameters(terms, len(lines), jumps=jumps)
+    # Priors at the truth where they can be, and lines where they are expected.
+    shifts = slice(2 + 2 + terms + 1, 2 + 2 + terms + 2 * len(lines), 2)
+    true[shifts] = 0.0
     full = counted(window(terms, lines), true, around)
     start = true + 0.1 * np.where(np.arange(true.size) == 0, 1.0, 0.5)
-    start[2 + 2 + terms + 1 :: 2] = 0.0
+    start[shifts] = 0.0
     found = fit_edge(full, around, start)
     assert found.maximum.converged
     # The priors of slope and bend pull a little, far below the uncertainty.
@@ -151,20 +187,27 @@ def test_mean_counts_give_back_their_parameters(case):
 
 
 def stated_penalty(p, terms, lines):
-    """The priors in words: smooth (1, 0) +- 3, slope 1.5, bend 1, line 0.02 deg, level^0.1."""
-    penalty = ((p[2] - 1.0) / 3.0) ** 2 + (p[3] / 3.0) ** 2
+    """The priors in words.
+
+    Smooth 2.5 +- 3 and -0.5 +- 2, slope 1.5, bend 1, line 0.02 deg, level^0.1, jump 0.06 +- 0.06.
+    """
+    penalty = ((p[2] - 2.5) / 3.0) ** 2 + ((p[3] + 0.5) / 2.0) ** 2
     penalty += sum((p[5 + i] / u) ** 2 for i, u in enumerate((1.5, 1.0)[: terms - 1]))
     for i in range(lines):
         penalty += (p[4 + terms + 2 * i + 1] / 0.02) ** 2
+    penalty += sum(((jump - 0.06) / 0.06) ** 2 for jump in p[4 + terms + 2 * lines :])
     return penalty - 2.0 * 0.1 * p[4]
 
 
-@pytest.mark.parametrize("case", ["plain", "bent background", "two lines", "long dead time"])
+@pytest.mark.parametrize(
+    "case", ["plain", "bent background", "two lines", "own edge", "long dead time"]
+)
 def test_the_maximum_is_one_of_likelihood_and_stated_priors(case):
     terms, lines, changes = CASES[case]
     around = given(**changes)
-    full = counted(window(terms, lines), parameters(terms, len(lines)), around, seed=4)
-    best = fit_edge(full, around, parameters(terms, len(lines))).maximum
+    true = parameters(terms, len(lines), jumps=[0.1] * len(window(terms, lines).absorption_deg))
+    full = counted(window(terms, lines), true, around, seed=4)
+    best = fit_edge(full, around, true).maximum
     assert best.penalty == pytest.approx(stated_penalty(best.parameters, terms, len(lines)))
 
     def objective(p):

@@ -1,4 +1,4 @@
-"""Damaged run sheets and tables: a run, or one sentence, and quickly.
+"""Damaged run sheets, tables and claims: a run, or one sentence, and quickly.
 
 The longer campaign is ``python tests/campaign/fuzz.py``.
 """
@@ -18,6 +18,8 @@ from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 from sheet_text import SHEET, write_run
 
+from hdetermine.classcheck.claimalone import check_alone
+from hdetermine.classcheck.groups import find_groups
 from hdetermine.errors import InputError
 from hdetermine.files.draft import draft_sheet
 from hdetermine.files.plaintext import plain_text
@@ -25,6 +27,7 @@ from hdetermine.files.runsheet import read_run
 
 LONGEST_s = 10.0
 SPREADSHEETS = {"xlsx": file_specimens.xlsx(), "ods": file_specimens.ods()}
+CLAIMS_XLSX = file_specimens.claims_xlsx()
 COMMON = settings(
     deadline=None, derandomize=True, suppress_health_check=[HealthCheck.too_slow], database=None
 )
@@ -60,6 +63,56 @@ def read_or_refuse(sheet: bytes, table: bytes) -> str:
             assert np.isfinite(quantity.value)
             assert quantity.standard_uncertainty >= 0
         return ""
+
+
+def claims_or_refusals(files: dict[str, bytes]) -> list[str]:
+    """Read a class of claims without data; return what is refused; check whatever comes."""
+    with tempfile.TemporaryDirectory() as name:
+        top = Path(name)
+        for path, content in files.items():
+            (top / path).parent.mkdir(exist_ok=True)
+            (top / path).write_bytes(content)
+        began = time.process_time()
+        try:
+            groups, remarks = find_groups(top, top / "out")
+        except InputError as error:
+            assert_plain(str(error))
+            return [str(error)]
+        finally:
+            assert time.process_time() - began < LONGEST_s
+        faults = []
+        for group in groups:
+            if group.claim_fault:
+                assert_plain(group.claim_fault)
+                faults.append(group.claim_fault)
+            if group.claim is not None:
+                check_alone(group.claim, None)
+        for remark in remarks:
+            assert_plain(remark)
+        assert time.process_time() - began < LONGEST_s
+        return faults
+
+
+@settings(COMMON, max_examples=100)
+@given(st.integers(0, 2**32))
+def test_damaged_claim_sheets(seed):
+    sheet = damaged(file_specimens.CLAIM_SHEET.encode(), random.Random(seed))
+    claims_or_refusals({"alder/claim.toml": sheet})
+
+
+@settings(COMMON, max_examples=150)
+@given(st.integers(0, 2**32))
+def test_damaged_claim_tables(seed):
+    chance = random.Random(seed)
+    table = damaged(chance.choice(file_specimens.CLAIM_TABLES).encode(), chance)
+    claims_or_refusals({"claims.csv": table})
+
+
+@settings(COMMON, max_examples=50)
+@given(st.integers(0, 2**32))
+def test_damaged_claim_spreadsheets(seed):
+    data = damaged_archive(CLAIMS_XLSX, random.Random(seed))
+    claims_or_refusals({"claims.xlsx": data})
 
 
 @settings(COMMON, max_examples=150)
@@ -118,3 +171,7 @@ def test_specimens_are_sound():
         assert not read_or_refuse(file_specimens.sheet_for(more).encode(), table.encode())
     for data in SPREADSHEETS.values():
         assert not read_or_refuse(SHEET.encode(), data)
+    assert not claims_or_refusals({"alder/claim.toml": file_specimens.CLAIM_SHEET.encode()})
+    for text in file_specimens.CLAIM_TABLES:
+        assert not claims_or_refusals({"claims.csv": text.encode()})
+    assert not claims_or_refusals({"claims.xlsx": CLAIMS_XLSX})

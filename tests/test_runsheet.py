@@ -121,7 +121,7 @@ def test_default_spread_never_leaves_the_support():
     assert quantity.half_width == pytest.approx(10.0)
     none = settle(defaults.DEAD_TIME, parse_stated(0.0), "run.toml")
     assert none.standard_uncertainty == 0.0
-    kernel = settle(defaults.KERNEL, parse_stated(0.9), "run.toml")
+    kernel = settle(defaults.KERNEL, parse_stated(1.9), "run.toml")
     assert kernel.half_width == pytest.approx(0.1)
 
 
@@ -262,7 +262,7 @@ FAULTS = [
     ("step_deg = 0.1", "zero_deg = 200", ["zero_deg", "found 200"]),
     ("step_deg = 0.1", "step_deg = 0", ["step_deg", "found 0"]),
     ("step_deg = 0.1", "resolution_deg = -1", ["resolution_deg", "found -1"]),
-    ("step_deg = 0.1", "kernel_triangular_fraction = 2", ["kernel", "0 to 1"]),
+    ("step_deg = 0.1", "kernel_triangular_fraction = 3", ["kernel", "0 to 2"]),
     (
         "step_deg = 0.1",
         "kernel_triangular_fraction = { value = 0.5, half_width = 0.7 }",

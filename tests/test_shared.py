@@ -23,7 +23,7 @@ from hdetermine.inference.shared import (
 )
 from hdetermine.records.quantity import Quantity
 
-SHARED_TRUTH = np.array([1.3, -0.5, 0.3])
+SHARED_TRUTH = np.array([2.8, 0.45, 0.02])
 # Cutoff reading and energy at the limit of three voltages.
 EDGES = ((5.2, 30.0), (4.5, 35.0), (6.2, 25.0))
 
@@ -42,7 +42,7 @@ def width(value=0.25, u=math.inf):
     return Quantity(names.RESOLUTION, "w", value, u, "°")
 
 
-def fits_of(*, seed=None, rate=6000.0, width_deg=0.25):
+def fits_of(*, seed=None, rate=12000.0, width_deg=0.25):
     """One fit an edge; mean counts unless seeded. All obey one smooth factor."""
     reference = math.exp(
         np.mean([math.log(math.sin(math.radians(edge - 0.08))) for edge, _ in EDGES])
@@ -64,19 +64,20 @@ def shared(request):
 
 
 def test_the_smooth_map_is_that_of_one_function():
-    """ln T = t1 ln r + t2 (ln r)^2 + t3 (ln r)^3 about another reference, to second order.
+    """ln T = t1 ln r - t2 (r^3 - 1)/3 about another reference, and t3 M for the bend.
 
-    Constants go into the amplitude; the cube of the new logarithm has no term of its own.
+    Constants go into the amplitude.
     """
-    t1, t2, t3, ratio = 1.3, -0.5, 0.3, 1.23
+    t1, t2, t3, ratio = 1.3, 0.5, 0.3, 1.23
     a1, a2 = smooth_map(ratio) @ np.array([t1, t2, t3])
+
+    def whole(r):
+        return t1 * math.log(r) - t2 * (r**3 - 1.0) / 3.0
+
     for x in (0.0, 0.1, 0.4):
-        whole = math.log(ratio) + math.log1p(x)
-        start = t1 * math.log(ratio) + t2 * math.log(ratio) ** 2 + t3 * math.log(ratio) ** 3
-        own = a1 * math.log1p(x) + a2 * math.log1p(x) ** 2
-        dropped = t3 * math.log1p(x) ** 3
-        exact = t1 * whole + t2 * whole**2 + t3 * whole**3
-        assert exact == pytest.approx(start + own + dropped)
+        bend = ((1.0 + x) ** 3 - 1.0) / 3.0 - math.log1p(x)
+        own = a1 * math.log1p(x) + a2 * bend
+        assert own == pytest.approx(whole(ratio * (1.0 + x)) - whole(ratio) + t3 * bend)
 
 
 def test_names_and_truth(shared):
@@ -117,7 +118,10 @@ def joint_information(shared):
         block[5, 5] += 1.5**-2.0  # prior of the background's slope
         information[np.ix_(columns, columns)] += block
         at += p
-    information[-3:, -3:] += np.eye(3) / 9.0  # prior of the shared numbers: 3
+    # Priors of the shared numbers.
+    information[-3:, -3:] += np.diag(
+        np.array([3.0, 1.0, 0.4]) ** -2.0
+    )  # priors of the shared numbers
     return information
 
 

@@ -18,7 +18,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
-from hdetermine.inference.linefit import KERNEL_CENTRE, KERNEL_U, FittedLine
+from hdetermine.inference.linefit import KERNEL_CENTRE, KERNEL_U, WIDEST_FORM, FittedLine
 from hdetermine.inference.linesearch import find_lines, line_measures, select_lines
 from hdetermine.inference.measurement import WAVELENGTH_SCALE
 from hdetermine.inference.spacing import free_fit, joint_inputs, spacing_gradient, spacing_u
@@ -33,6 +33,7 @@ NOTABLE_SCATTER = 2.0  # chi-square per degree of freedom
 LEARNT = 0.9  # lines fix the spacing if they shrink its variance below this fraction
 FORM_FLOOR = 0.003  # of the width: no line stands nearer to its place than its form is known
 RESOLUTION_FLOOR = 0.01  # relative; the form of the kernel is never known better
+FLAT_TOP = 0.15  # of a step: a box may stand anywhere between two steps, and nothing shows it
 BLEND_U = 2e-5  # relative; satellites and doublet ratio against the tabulated peak
 
 
@@ -91,7 +92,10 @@ def angle_scale(run: Run) -> AngleScale:
             ]
         )
     width = float(np.average([line.fwhm_deg for line in used], weights=weight))
+    resolution, kernel = _resolution(apparatus, used)
+    boxed = max(kernel.value - 1.0, 0.0)
     covariance[0, 0] += (FORM_FLOOR * width) ** 2
+    covariance[0, 0] += (boxed * FLAT_TOP * apparatus.goniometer.step_deg) ** 2
     zero_quantity = replace(
         apparatus.goniometer.zero_deg,
         value=float(zero),
@@ -115,7 +119,6 @@ def angle_scale(run: Run) -> AngleScale:
     size = len(inputs)
     whole = np.eye(size)
     whole[: size - 1, : size - 1] = correlation
-    resolution, kernel = _resolution(apparatus, used)
     return AngleScale(
         zero=zero_quantity,
         resolution=resolution,
@@ -184,7 +187,7 @@ def _resolution(apparatus: Apparatus, used: tuple[FittedLine, ...]) -> tuple[Qua
         return resolution, prior
     kernel = replace(
         prior,
-        value=min(max(value, 0.0), 1.0),
+        value=min(max(value, 0.0), WIDEST_FORM),
         standard_uncertainty=kernel_u,
         distribution="normal",
         evaluation="A",

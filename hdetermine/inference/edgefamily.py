@@ -157,6 +157,7 @@ def first_parameters(window: EdgeWindow, edge_deg: float, given: Surroundings) -
     start += [math.log(floor), *([0.0] * (window.background_terms - 1))]
     for _ in window.lines:
         start += [math.log(height * given.kernel.fwhm_deg), 0.0]
+    start += [0.0] * len(window.absorption_deg)
     return np.array(start)
 
 
@@ -187,7 +188,9 @@ def fit_family(every: tuple[EdgeWindow, ...], start: EdgeFit, given: Surrounding
             again = best_start(window, start.reading_deg, given)
             fit = again if again.maximum.converged else fit
         inside = window.reading_deg[0] < fit.reading_deg < window.reading_deg[-1]
-        if fit.maximum.converged and inside and math.isfinite(fit.reading_u_deg):
+        # An uncertainty longer than the window says that there is no edge in it.
+        told = fit.reading_u_deg < window.reading_deg[-1] - window.reading_deg[0]
+        if fit.maximum.converged and inside and told:
             fits.append(fit)
     return average(tuple(fits)) if fits else None
 

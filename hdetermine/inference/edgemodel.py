@@ -5,10 +5,12 @@ The expected count of a point is
     t rec( B(theta) + int K(theta - theta') C(theta') dtheta' + lines ),
 
 with rec the dead time, B = exp(b0 + b1 s + b2 s^2) the background, K the smearing kernel and
-C = exp(a0 + a1 L + a2 L^2) cos(theta') f(x) the continuum above its limit, x = lambda/lambda_min
-- 1, L = ln(1 + x), and f the shape of `physics.continuum`. The fit maximises the likelihood by
-Fisher scoring (`scoring`). Weak priors keep what the data do not see within reason; they are stated
-beside the numbers below.
+C = exp(a0 + a1 L + a2 M) cos(theta') f(x) the continuum above its limit, x = lambda/lambda_min
+- 1, L = ln(1 + x), M = ((1 + x)^3 - 1)/3 - L, and f the shape of `physics.continuum`. Absorption
+grows as the cube of the wavelength, so a1 L + a2 M describes any power of the wavelength and any
+absorber exactly. Where the window passes the anode's own K edge, the continuum steps up by a
+factor 1 + j. The fit maximises the likelihood by Fisher scoring (`scoring`). Weak priors keep what
+the data do not see within reason; they are stated beside the numbers below.
 """
 
 from __future__ import annotations
@@ -17,6 +19,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import ndtr
 
 from hdetermine.inference.scoring import Maximum, maximise
 from hdetermine.inference.smearing import Kernel, quadrature
@@ -33,18 +36,30 @@ FloatArray = NDArray[np.float64]
 _BACKGROUND_U = (1.5, 1.0)
 SMOOTH_TERMS = 2
 # What transmission, crystal and counter do together is close to a power of the wavelength: the
-# crystal reflects as its square, thin counters absorb as its cube, windows and air the other way.
-SMOOTH_MEAN = (1.0, 0.0)
-SMOOTH_U = (3.0, 3.0)
+# crystal reflects as its square, thin counters absorb as its cube; windows and air, and counters
+# that absorb much, bend it down.
+SMOOTH_MEAN = (2.5, -0.5)
+SMOOTH_U = (3.0, 2.0)
 _LINE_SHIFT_U_DEG = 0.02
+# The photons come from depths that the anode itself absorbs in: by a few percent.
+_JUMP_MEAN, _JUMP_U = 0.06, 0.06
 _BACKGROUND_POWER = 0.1
 
 
 @dataclass(frozen=True, slots=True)
 class LineTemplate:
-    """A group of lines inside the window: components as (angle, natural FWHM, strength)."""
+    """A group of lines inside the window.
+
+    Attributes
+    ----------
+    components : tuple of (float, float, float)
+        True angle, natural FWHM (both in degrees) and strength of each line.
+    absorption_deg : float or None
+        True angle of the anode's own K edge, where it stands just below the lines.
+    """
 
     components: tuple[tuple[float, float, float], ...]
+    absorption_deg: float | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -116,9 +131,15 @@ class EdgeWindow:
     smooth_u: tuple[float, float] = SMOOTH_U
 
     @property
+    def absorption_deg(self) -> tuple[float, ...]:
+        """True angles of the anode's absorption edges inside the window."""
+        return tuple(line.absorption_deg for line in self.lines if line.absorption_deg is not None)
+
+    @property
     def parameters(self) -> int:
         """Number of parameters of the fit."""
-        return 2 + SMOOTH_TERMS + self.background_terms + 2 * len(self.lines)
+        own = 2 * len(self.lines) + len(self.absorption_deg)
+        return 2 + SMOOTH_TERMS + self.background_terms + own
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -176,17 +197,19 @@ def continuum_rate(
     limit_sine = np.sin(np.radians(limit))
     x = np.maximum(np.sin(radians) / limit_sine - 1.0, 0.0)
     value, slope = rising_continuum(x, given.excess, given.energy_keV / given.excess_energy_keV)
-    stretch = np.log1p(x)
-    smooth = parameters[1] + parameters[2] * stretch + parameters[3] * stretch**2
+    longer = 1.0 + x
+    stretch = np.log(longer)
+    bend = (longer**3 - 1.0) / 3.0 - stretch
+    smooth = parameters[1] + parameters[2] * stretch + parameters[3] * bend
     factor = weights * np.cos(radians) * np.exp(np.minimum(smooth, 60.0))
     value, slope = value * factor, slope * factor
-    slope = slope + value * (parameters[2] + 2.0 * parameters[3] * stretch) / (1.0 + x)
+    slope = slope + value * (parameters[2] + parameters[3] * (longer**3 - 1.0)) / longer
     rate[lit] = value.sum(axis=1)
-    x_by_limit = -(1.0 + x) / np.tan(np.radians(limit)) * (np.pi / 180.0)
+    x_by_limit = -longer / np.tan(np.radians(limit)) * (np.pi / 180.0)
     derivatives[lit, 0] = (slope * x_by_limit).sum(axis=1)
     derivatives[lit, 1] = rate[lit]
     derivatives[lit, 2] = (value * stretch).sum(axis=1)
-    derivatives[lit, 3] = (value * stretch**2).sum(axis=1)
+    derivatives[lit, 3] = (value * bend).sum(axis=1)
     return rate, derivatives
 
 
@@ -219,9 +242,15 @@ def expected_counts(
     """Expected recorded counts, shape (n,), and their Jacobian, shape (n, p)."""
     continuum, by_continuum = continuum_rate(window.reading_deg, parameters, given)
     background, by_background = background_rate(window, parameters)
+    start = 2 + SMOOTH_TERMS + window.background_terms
+    by_jump = []
+    for i, angle in enumerate(window.absorption_deg, start + 2 * len(window.lines)):
+        past = ndtr((window.reading_deg - given.zero_deg - angle) / given.kernel.sigma_deg)
+        gate = 1.0 + float(parameters[i]) * past
+        by_jump.append((continuum * past)[:, np.newaxis])
+        continuum, by_continuum = continuum * gate, by_continuum * gate[:, np.newaxis]
     columns = [by_continuum, by_background]
     rate = continuum + background
-    start = 2 + SMOOTH_TERMS + window.background_terms
     for i, template in enumerate(window.lines):
         amplitude = np.exp(min(float(parameters[start + 2 * i]), 60.0))
         shift = float(parameters[start + 2 * i + 1])
@@ -234,7 +263,7 @@ def expected_counts(
     dead_time_s = given.dead_time_us * 1e-6
     expected = window.dwell_s * recorded_rate(rate, dead_time_s, given.dead_time_model)
     slope = window.dwell_s * recorded_slope(rate, dead_time_s, given.dead_time_model)
-    jacobian = slope[:, np.newaxis] * np.concatenate(columns, axis=1)
+    jacobian = slope[:, np.newaxis] * np.concatenate([*columns, *by_jump], axis=1)
     return np.maximum(expected, 1e-9), jacobian
 
 
@@ -249,6 +278,8 @@ def _prior(window: EdgeWindow, parameters: FloatArray) -> tuple[float, FloatArra
     precision[start + 1 : start + 1 + bends] = np.array(_BACKGROUND_U[:bends]) ** -2.0
     for i in range(len(window.lines)):
         precision[start + window.background_terms + 2 * i + 1] = _LINE_SHIFT_U_DEG**-2
+    jumps = slice(start + window.background_terms + 2 * len(window.lines), None)
+    precision[jumps], centre[jumps] = _JUMP_U**-2, _JUMP_MEAN
     gradient = precision * (parameters - centre)
     penalty = float(gradient @ (parameters - centre))
     penalty -= 2.0 * _BACKGROUND_POWER * float(parameters[start])
@@ -269,7 +300,7 @@ def fit_edge(
         What is taken as known.
     start : ndarray, shape (p,)
         Where to start: cutoff reading, log amplitude, smooth terms, log background and its
-        slope, then log amplitude and shift of each line.
+        slope, then log amplitude and shift of each line, then the jumps.
     hold : int, optional
         Index of a parameter that stays where it starts (for profiles).
     """

@@ -11,7 +11,12 @@ from numpy.typing import NDArray
 from hdetermine.inference.edgefamily import Obstacle, best_start, windows
 from hdetermine.inference.edgemodel import EdgeFit, LineTemplate, Surroundings
 from hdetermine.inference.edgesearch import search_edge
-from hdetermine.inference.linesearch import absorption_edges, energy_eV, scan_features
+from hdetermine.inference.linesearch import (
+    absorption_edges,
+    anode_edges,
+    energy_eV,
+    scan_features,
+)
 from hdetermine.inference.refusals import (
     dropouts,
     insignificant,
@@ -61,9 +66,11 @@ def _obstacles(run: Run, scale: AngleScale, scan: Scan) -> tuple[Obstacle, ...]:
     found = []
     for feature in scan_features(run, scan):
         centres = [angle for angle, _, _ in feature.components]
-        template = LineTemplate(feature.components)
         low = min(centres) + scale.zero.value - LINE_REACH_WIDTHS * width
         high = max(centres) + scale.zero.value + LINE_REACH_WIDTHS * width
+        # The anode's own edge stands so close below K-M that a window holds both or neither.
+        own = [angle for angle in anode_edges(run) if low < angle + scale.zero.value < high]
+        template = LineTemplate(feature.components, own[0] if own else None)
         found.append(Obstacle(low, high, template))
     for angle in absorption_edges(run):
         reading = angle + scale.zero.value

@@ -13,6 +13,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.linalg import block_diag
 from scipy.special import ndtr
 
 from hdetermine.inference.features import Feature, covered
@@ -33,8 +34,11 @@ _LOCAL = 6  # position, log width, kernel, and level, slope and bend of the log 
 _BACKGROUND_U = (3.0, 0.7)  # weak priors of slope and bend over half the window
 _STEP_U = 2.0  # weak prior of the logarithm of an absorption edge's step
 _WIDEST_DEG = 0.8
+_STEP = 1e-4  # of the derivatives by position and by logarithm of the width
 # Prior of the kernel's form: a rectangular distribution between Gaussian and triangle.
 KERNEL_CENTRE, KERNEL_U = 0.5, 0.29
+WIDEST_FORM = 2.0  # strong lines may ask for a box
+_BOXY = 0.9  # a form from which on a box is tried
 
 
 @dataclass(frozen=True, slots=True)
@@ -99,11 +103,6 @@ def _prominence(
     covariance = np.linalg.inv(normal)
     amplitude = float((covariance @ (weighted.T @ rate[near]))[0])
     return max(amplitude / math.sqrt(max(float(covariance[0, 0]), 1e-300)), 0.0)
-
-
-def _feature_profile(angles: FloatArray, feature: Feature, kernel: Kernel) -> FloatArray:
-    centre, natural, strength = np.array(feature.components).T
-    return np.asarray(kernel.profile(angles[:, np.newaxis] - centre, natural) @ strength)
 
 
 def _clusters(inside: tuple[Feature, ...], reach_deg: float) -> Iterator[tuple[Feature, ...]]:
@@ -242,23 +241,34 @@ def _fit_cluster(
     past = ndtr((readings - zero_deg - steps[:, np.newaxis]) * FWHM_PER_SIGMA / width_deg)
     dead_time_s = dead_time_us * 1e-6
 
-    def profiles(place: FloatArray) -> FloatArray:
-        kernel = Kernel(math.exp(min(max(float(place[1]), -4.0), 1.0)), float(place[2]))
-        return np.stack([_feature_profile(readings - place[0], f, kernel) for f in cluster])
+    lines, natural, _ = np.concatenate([np.array(one.components) for one in cluster]).T
+    owned = block_diag(*[np.array(one.components)[:, 2:] for one in cluster])
+
+    def profiles(shift_deg: FloatArray, log_width: float, fraction: float) -> FloatArray:
+        """Shapes of the features, shape (shifts, features, points)."""
+        kernel = Kernel(math.exp(min(max(log_width, -4.0), 1.0)), fraction)
+        distance = readings[:, np.newaxis] - shift_deg[:, np.newaxis, np.newaxis] - lines
+        return np.asarray((kernel.profile(distance, natural) @ owned).transpose(0, 2, 1))
 
     def model(parameters: FloatArray) -> tuple[FloatArray, FloatArray]:
         jump = np.exp(np.clip(parameters[_LOCAL:local], -30.0, 30.0))[:, np.newaxis]
         gate = 1.0 + (jump - 1.0) * past
         base = np.exp(np.clip(parameters[3:_LOCAL] @ powers, -30.0, 30.0)) * gate.prod(axis=0)
         strength = np.exp(np.clip(parameters[local:], -30.0, 30.0))
-        shapes = profiles(parameters[:3])
+        zero, log_width, fraction = parameters[:3].tolist()
+        shifted = np.array([zero, zero + _STEP, zero - _STEP])
+        shapes, ahead, behind = profiles(shifted, log_width, fraction)
+        wider = profiles(shifted[:1], log_width + _STEP, fraction)[0]
+        narrower = profiles(shifted[:1], log_width - _STEP, fraction)[0]
+        # The profile is linear in the form between two neighbours of the row.
+        step = _STEP if fraction < 0.5 or 1.0 <= fraction < 1.5 else -_STEP
+        formed = profiles(shifted[:1], log_width, fraction + step)[0]
         rate = base + strength @ shapes
-        columns = []
-        for i in range(3):
-            step = np.zeros(3)
-            step[i] = 1e-4
-            ahead, behind = profiles(parameters[:3] + step), profiles(parameters[:3] - step)
-            columns.append(strength @ (ahead - behind) / 2e-4)
+        columns = [
+            strength @ (ahead - behind) / (2.0 * _STEP),
+            strength @ (wider - narrower) / (2.0 * _STEP),
+            strength @ (formed - shapes) / step,
+        ]
         columns += [*(base * powers), *(base * jump * past / gate)]
         columns += [*(strength[:, np.newaxis] * shapes)]
         slope = dwell * recorded_slope(rate, dead_time_s, dead_time_model)
@@ -284,7 +294,15 @@ def _fit_cluster(
     limits[:3] = 0.5 * width_deg, 0.4, 0.3
     least, most = np.full(size, -np.inf), np.full(size, np.inf)
     least[2], most[2] = 0.0, 1.0
-    return maximise(counts, model, prior, start, limits, bounds=(least, most))
+    found = maximise(counts, model, prior, start, limits, bounds=(least, most))
+    if found.parameters[2] < _BOXY:
+        return found
+    # The form has a kink at the triangle: what lies beyond is a fit of its own.
+    least[2], most[2] = 1.0, WIDEST_FORM
+    start[2] = WIDEST_FORM - 0.1
+    other = maximise(counts, model, prior, start, limits, bounds=(least, most))
+    better = other.deviance + other.penalty < found.deviance + found.penalty
+    return other if other.converged and better else found
 
 
 def _harvest(scan: str, cluster: tuple[Feature, ...], fit: Maximum) -> Iterator[FittedLine]:

@@ -53,6 +53,14 @@ def absorption_edges(run: Run) -> tuple[float, ...]:
     )
 
 
+def anode_edges(run: Run) -> tuple[float, ...]:
+    """True angle of the anode's own K absorption edge, degrees; none out of reach."""
+    crystal = run.apparatus.crystal
+    return absorption_angles_deg(
+        (run.apparatus.tube.anode,), crystal_spacing_pm(crystal), crystal.refraction.value
+    )
+
+
 def find_lines(run: Run) -> tuple[FittedLine, ...]:
     """Fit every line that any scan of the run covers.
 

@@ -47,8 +47,14 @@ class Maximum:
     converged: bool
 
     def covariance(self) -> FloatArray:
-        """Inverse of the information, shape (p, p)."""
-        return np.asarray(np.linalg.pinv(self.information, hermitian=True))
+        """Inverse of the information, shape (p, p).
+
+        Inverted with a diagonal of ones: a parameter of which the counts tell next to nothing is
+        told apart from one that lies in a direction they tell nothing of.
+        """
+        scale = np.sqrt(np.diag(self.information).clip(min=1e-300))
+        shape = np.outer(scale, scale)
+        return np.asarray(np.linalg.pinv(self.information / shape, hermitian=True) / shape)
 
 
 def maximise(

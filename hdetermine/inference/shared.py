@@ -1,12 +1,15 @@
 """What all edges share: the slow variation of the spectrum with wavelength, and the width.
 
-Transmission, crystal and counter multiply every spectrum by one smooth function of wavelength,
+Transmission, crystal and counter multiply every spectrum by one smooth function of wavelength.
+Crystals reflect, and thin counters count, as a power of it, and the optical depth of all that
+absorbs grows as its cube (W. H. Bragg and S. E. Peirce, Phil. Mag. 28, 626, 1914):
 
-    ln T = t1 ln r + t2 (ln r)^2 + t3 (ln r)^3,    r = wavelength over a reference wavelength,
+    ln T = t1 ln r - t2 (r^3 - 1)/3,    r = wavelength over a reference wavelength.
 
-so the smooth terms of an edge at r0, a1 = t1 + 2 t2 ln r0 + 3 t3 (ln r0)^2 and a2 = t2 + 3 t3
-ln r0, are not free but follow from t up to a small freedom of their own (the target's own
-absorption changes a little with the voltage). Where
+Besides, the continuum itself may bend away from the assumed law, in the same way at each voltage:
+t3 M, with M of `edgemodel`. So the smooth terms of an edge at r0, a1 = t1 - t2 r0^3 and
+a2 = t3 - t2 r0^3, are not free but follow from t up to a small freedom of their own (the target's
+own absorption changes a little with the voltage). Where
 neither lines nor run sheet tell the width of the smearing, the edges share that too. Each fit
 tells by its profile likelihood how it would like the shared numbers g to change; their sum, with
 weak priors, is climbed by Newton steps. The result is a further set of inputs of the
@@ -25,8 +28,6 @@ from numpy.typing import NDArray
 
 from hdetermine.inference import measurement as names
 from hdetermine.inference.edgemodel import (
-    SMOOTH_MEAN,
-    SMOOTH_U,
     EdgeFit,
     Surroundings,
     expected_counts,
@@ -38,8 +39,11 @@ FloatArray = NDArray[np.float64]
 
 SMOOTH_NAMES = tuple(f"continuum.smooth_{k}" for k in (1, 2, 3))
 TERMS = len(SMOOTH_NAMES)
-_CUBIC_U = 3.0  # weak prior of t3; those of t1 and t2 stand in `edgemodel`
-OWN_FREEDOM = (0.3, 0.6)  # standard deviations of a1 and a2 about the shared function
+# Weak priors: crystal and counter together a power between about 0 and 6; absorbers that let
+# through most, or at least some, of what the edges show; a bend of either sign, by a sixth where
+# the wavelength is half as long again as the limit.
+_MEAN, _U = (3.0, 0.5, 0.0), (3.0, 1.0, 0.4)
+OWN_FREEDOM = (0.3, 0.4)  # standard deviations of a1 and a2 about the shared function
 _WIDTH_STEP = 1e-3
 _ROUNDS = 15
 _SETTLED = 0.02  # of a standard uncertainty
@@ -105,8 +109,7 @@ def smooth_map(ratio: float) -> FloatArray:
     ratio : float
         Wavelength of the edge over the reference wavelength.
     """
-    position = math.log(ratio)
-    return np.array([[1.0, 2.0 * position, 3.0 * position**2], [0.0, 1.0, 3.0 * position]])
+    return np.array([[1.0, -(ratio**3), 0.0], [0.0, -(ratio**3), 1.0]])
 
 
 def by_input(fit: EdgeFit, changed: Surroundings, change: float) -> FloatArray:
@@ -183,8 +186,8 @@ def share(fits: tuple[EdgeFit, ...], stated: Quantity, *, width_free: bool) -> S
     """
     reference = math.exp(float(np.mean([math.log(edge_sine(fit)) for fit in fits])))
     maps = [_map(fit, reference, width_free) for fit in fits]
-    precision = np.array([*SMOOTH_U, _CUBIC_U]) ** -2.0
-    centre = np.array([*SMOOTH_MEAN, 0.0])
+    precision = np.array(_U) ** -2.0
+    centre = np.array(_MEAN)
     if width_free:
         known = math.isfinite(stated.standard_uncertainty)
         precision = np.concatenate([[stated.standard_uncertainty**-2 if known else 0.0], precision])

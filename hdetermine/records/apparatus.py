@@ -91,7 +91,8 @@ class Goniometer:
         Full width at half maximum of the angular smearing, degrees; None if nobody stated it
         (then it comes from the lines or from the edges themselves).
     kernel_triangular_fraction : Quantity
-        0 for a Gaussian, 1 for a triangular smearing kernel, between them a mixture, unit 1.
+        0 for a Gaussian, 1 for a triangular, 2 for a box-shaped smearing kernel, between them a
+        mixture of the neighbours, unit 1.
     step_deg : float
         Nominal step of the scans, degrees.
     """

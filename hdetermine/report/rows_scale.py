@@ -47,9 +47,9 @@ def scale_rows(d: Determination) -> Table:
         (Cell("resolution, full width at half maximum"),
          with_uncertainty(scale.resolution.value, scale.resolution.standard_uncertainty, "deg"),
          words(FROM_WORDS.get(scale.resolution_from, scale.resolution_from))),
-        (Cell("smearing kernel: triangular fraction"),
+        (Cell("form of the smearing kernel"),
          with_uncertainty(scale.kernel.value, scale.kernel.standard_uncertainty),
-         Cell("0: Gaussian, 1: triangular")),
+         Cell("0: Gaussian, 1: triangular, 2: box")),
     ]  # fmt: skip
     if scale.free_spacing_pm is not None and scale.free_spacing_u_pm is not None:
         stated = d.run.apparatus.crystal.spacing_pm

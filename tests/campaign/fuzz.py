@@ -14,6 +14,7 @@ import argparse
 import json
 import random
 import resource
+import shutil
 import subprocess
 import sys
 import tempfile
@@ -33,6 +34,7 @@ HANGS_s = 1800.0
 """A thousand inputs that take this long hang."""
 
 KINDS = ("run sheet", "table", "table", "xlsx", "ods", "draft", "bytes")
+CLAIM_KINDS = ("claim sheet", "claim table", "claim table", "claims xlsx")
 
 
 def one_input(seed: int, folder: Path) -> tuple[str, str]:
@@ -43,11 +45,12 @@ def one_input(seed: int, folder: Path) -> tuple[str, str]:
 
     from hdetermine.errors import InputError
     from hdetermine.files.draft import draft_sheet
-    from hdetermine.files.plaintext import plain_text
     from hdetermine.files.runsheet import read_run
 
     chance = random.Random(seed)
-    kind = chance.choice(KINDS)
+    kind = chance.choice((*KINDS, *CLAIM_KINDS))
+    if kind in CLAIM_KINDS:
+        return kind, one_class_of_claims(kind, chance, folder)
     more, text = chance.choice(file_specimens.TABLES)
     sheet, table = file_specimens.sheet_for(more).encode(), text.encode()
     if kind == "run sheet":
@@ -68,11 +71,50 @@ def one_input(seed: int, folder: Path) -> tuple[str, str]:
         else:
             read_run(folder)
     except InputError as error:
-        sentence = str(error)
-        assert sentence == plain_text(sentence), "not plain text"
-        assert sentence.endswith("."), "not a sentence"
+        check_sentence(str(error))
         return kind, "refused"
     return kind, "read"
+
+
+def check_sentence(text: str) -> None:
+    """Fail unless a refusal is one plain sentence."""
+    from hdetermine.files.plaintext import plain_text
+
+    assert text == plain_text(text), "not plain text"
+    assert text.endswith("."), "not a sentence"
+
+
+def one_class_of_claims(kind: str, chance: random.Random, folder: Path) -> str:
+    """Make a class that has nothing but damaged claims, and check them against themselves."""
+    import file_specimens
+    from file_mutations import damaged, damaged_archive
+
+    from hdetermine.classcheck.claimalone import check_alone
+    from hdetermine.classcheck.groups import find_groups
+    from hdetermine.errors import InputError
+
+    top = folder / "class"
+    shutil.rmtree(top, ignore_errors=True)
+    (top / "alder").mkdir(parents=True)
+    if kind == "claim sheet":
+        sheet = damaged(file_specimens.CLAIM_SHEET.encode(), chance)
+        (top / "alder" / "claim.toml").write_bytes(sheet)
+    elif kind == "claim table":
+        table = chance.choice(file_specimens.CLAIM_TABLES).encode()
+        (top / "claims.csv").write_bytes(damaged(table, chance))
+    else:
+        (top / "claims.xlsx").write_bytes(damaged_archive(file_specimens.claims_xlsx(), chance))
+    try:
+        groups, _ = find_groups(top, top / "out")
+    except InputError as error:
+        check_sentence(str(error))
+        return "refused"
+    for group in groups:
+        if group.claim_fault:
+            check_sentence(group.claim_fault)
+        if group.claim is not None:
+            check_alone(group.claim, None)
+    return "refused" if any(group.claim_fault for group in groups) else "read"
 
 
 def child(first: int, number: int) -> None:
