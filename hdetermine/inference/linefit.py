@@ -250,6 +250,9 @@ def _fit_cluster(
         distance = readings[:, np.newaxis] - shift_deg[:, np.newaxis, np.newaxis] - lines
         return np.asarray((kernel.profile(distance, natural) @ owned).transpose(0, 2, 1))
 
+    least, most = np.full(size, -np.inf), np.full(size, np.inf)
+    least[2], most[2] = 0.0, 1.0
+
     def model(parameters: FloatArray) -> tuple[FloatArray, FloatArray]:
         jump = np.exp(np.clip(parameters[_LOCAL:local], -30.0, 30.0))[:, np.newaxis]
         gate = 1.0 + (jump - 1.0) * past
@@ -260,8 +263,8 @@ def _fit_cluster(
         shapes, ahead, behind = profiles(shifted, log_width, fraction)
         wider = profiles(shifted[:1], log_width + _STEP, fraction)[0]
         narrower = profiles(shifted[:1], log_width - _STEP, fraction)[0]
-        # The profile is linear in the form between two neighbours of the row.
-        step = _STEP if fraction < 0.5 or 1.0 <= fraction < 1.5 else -_STEP
+        # Between its bounds, two neighbours of the row, the profile is linear in the form.
+        step = _STEP if 2.0 * fraction < least[2] + most[2] else -_STEP
         formed = profiles(shifted[:1], log_width, fraction + step)[0]
         rate = base + strength @ shapes
         columns = [
@@ -292,8 +295,6 @@ def _fit_cluster(
     )
     limits = np.ones(size)
     limits[:3] = 0.5 * width_deg, 0.4, 0.3
-    least, most = np.full(size, -np.inf), np.full(size, np.inf)
-    least[2], most[2] = 0.0, 1.0
     found = maximise(counts, model, prior, start, limits, bounds=(least, most))
     if found.parameters[2] < _BOXY:
         return found
