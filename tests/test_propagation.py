@@ -1,6 +1,7 @@
 """Linear propagation for any measurement function of named inputs."""
 
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -17,7 +18,7 @@ from hdetermine.budget.planck import (
 )
 from hdetermine.budget.propagation import linear_budget, linear_outputs
 from hdetermine.errors import InputError
-from hdetermine.inference.measurement import estimates, planck_J_s
+from hdetermine.inference.measurement import GAIN, estimates, planck_J_s
 from hdetermine.inference.weights import planck_gradient
 from hdetermine.records.quantity import Quantity
 
@@ -210,6 +211,23 @@ def test_budget_of_h():
     assert 0.0 < common_share(found) < 1.0
     assert "voltage gain" in limiting_sentence(found)
     assert math.isfinite(found.effective_degrees_of_freedom)
+
+
+def test_three_contributions_are_named_whatever_their_size():
+    """One input may hold nearly all of the variance: the next two are named all the same."""
+    model = make_model(9, scatter_seed=4)
+    inputs = tuple(
+        replace(one, standard_uncertainty=0.01, distribution="normal") if one.name == GAIN else one
+        for one in model.inputs
+    )
+    found = planck_budget(replace(model, inputs=inputs))
+    shares = list(group_shares(found).items())[:3]
+    assert shares[0][1] > 0.8 > 0.05 > shares[1][1]
+    sentence = limiting_sentence(found)
+    assert f"is limited by {shares[0][0]} (" in sentence
+    assert "followed by" in sentence
+    for group, share in shares:
+        assert (group in sentence) is (share > 0.005)
 
 
 def test_groups_and_families():

@@ -113,6 +113,9 @@ def linear_figures(model: MeasurementModel, coverage_probability: float = 0.95) 
     )
 
 
+_LEADING, _SEEN = 0.05, 0.005  # shares of the variance that limit a result, or are worth a word
+
+
 def group_shares(budget: Budget) -> dict[str, float]:
     """Share of the variance of each group of rows, largest first."""
     shares: dict[str, float] = {}
@@ -132,19 +135,27 @@ def _percent(share: float) -> str:
     return f"{100.0 * share:.0f}\N{NARROW NO-BREAK SPACE}%"
 
 
+def _listed(parts: list[str]) -> str:
+    return " and ".join(filter(None, (", ".join(parts[:-1]), parts[-1])))
+
+
 def limiting_sentence(budget: Budget) -> str:
     """Say in one sentence what limits the result, and what more voltages could do."""
     shares = group_shares(budget)
     if not budget.combined_standard_uncertainty > 0.0:
         return "No input has an uncertainty, so nothing limits the result."
-    leading = [
-        f"{group} ({_percent(share)})" for group, share in list(shares.items())[:3] if share > 0.05
+    largest = list(shares.items())[:3]
+    leading = [f"{group} ({_percent(share)})" for group, share in largest if share > _LEADING]
+    following = [
+        f"{group} ({_percent(share)})" for group, share in largest if _SEEN < share <= _LEADING
     ]
     if leading:
         leading[0] = leading[0].replace(")", " of the variance)")
-        limits = " and ".join(filter(None, (", ".join(leading[:-1]), leading[-1])))
+        limits = _listed(leading)
     else:
-        limits = "no single source by more than 5\N{NARROW NO-BREAK SPACE}% of the variance"
+        limits = f"no single source by more than {_percent(_LEADING)} of the variance"
+    if following:
+        limits += f", followed by {_listed(following)}"
     return (
         f"{budget.measurand} is limited by {limits}; {_percent(common_share(budget))} of the "
         "variance is common to all voltages, and more voltages would not lower that."
