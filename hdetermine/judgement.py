@@ -12,6 +12,7 @@ from collections.abc import Mapping
 import numpy as np
 from scipy.stats import chi2 as chi2_distribution
 
+from hdetermine.budget.choice import VALUE_TOLERANCE
 from hdetermine.inference import measurement as names
 from hdetermine.inference.spacing import spacing_gradient, spacing_u
 from hdetermine.physics.reference import PLANCK_CONSTANT_J_S
@@ -31,7 +32,6 @@ from hdetermine.records.results import (
 
 DIFFERENCE_LIMIT = 2.58  # two-sided 99 % of a normal distribution
 CHANCE = 0.01
-ROUTE_LIMIT = 0.3  # between routes, in units of u
 INFLUENCE_LIMIT = 2.0  # shift of h in units of u(h) when one scan is left out
 
 # What the figures of the checks are.
@@ -284,7 +284,7 @@ def _routes_agree(routes: Mapping[str, Route]) -> Check:
     base = routes["linear"]
     others = [route for key, route in routes.items() if key != "linear" and route.usable]
     if not others or not base.standard_uncertainty_J_s > 0.0:
-        return Check(name, None, None, ROUTE_LIMIT, "Only one route was taken.", measure)
+        return Check(name, None, None, VALUE_TOLERANCE, "Only one route was taken.", measure)
     u = base.standard_uncertainty_J_s
     worst = max(
         max(
@@ -293,12 +293,12 @@ def _routes_agree(routes: Mapping[str, Route]) -> Check:
         )
         for route in others
     )
-    passed = worst <= ROUTE_LIMIT
+    passed = worst <= VALUE_TOLERANCE
     return Check(
         name,
         passed,
         worst,
-        ROUTE_LIMIT,
+        VALUE_TOLERANCE,
         "All routes that can be used give nearly the same h and u."
         if passed
         else "The routes differ: the relation is not linear over the uncertainties, or the data "

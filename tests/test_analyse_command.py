@@ -110,6 +110,16 @@ def test_other_spelling_into_the_run_folder_quietly(run_folder, tmp_path):
     assert "Bench room &lt;7&gt;" in (result / "report.html").read_text("utf-8")
 
 
+def test_the_place_of_the_outputs_does_not_steer_the_terminal(run_folder, tmp_path):
+    """The last line named the folder as it stands."""
+    status, stdout, _ = call(
+        "analyse", run_folder, "-o", tmp_path / "a\x1b]0;x\x07b", "--linear-only"
+    )
+    assert status == 0
+    assert stdout.splitlines()[-1].startswith(f"  Written to {tmp_path}/a]0;xb: ")
+    assert "\x1b" not in stdout
+
+
 def refused(status, stdout, stderr):
     assert status == 2
     assert stdout == ""

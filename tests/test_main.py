@@ -60,6 +60,36 @@ def test_an_output_folder_that_is_a_file_is_told_before_the_work(command, tmp_pa
     assert (tmp_path / "out").read_text() == "mine"
 
 
+STEERING = "a\x1b]0;x\x07b\u202ec\nd"
+"""Name of a folder that would retitle the terminal, turn the text round and break the line."""
+
+
+@pytest.mark.parametrize(
+    ("arguments", "status"),
+    [
+        (("demo", "copper_lithium_fluoride", "-o", "{}"), 0),
+        (("demo", "copper_lithium_fluoride", "-o", "{}/taken"), 2),
+        (("analyse", "{demo}", "-o", "{}/taken/mine", "--linear-only"), 2),
+        (("budget", "{}/missing"), 2),
+        (("check", "{}/missing"), 2),
+        (("draft", "{}/missing"), 2),
+        (("{}",), 2),
+    ],
+)
+def test_a_folder_whose_name_steers_the_terminal(arguments, status, tmp_path):
+    """The sentences about folders showed their names as they stand."""
+    folder = tmp_path / STEERING
+    if status:
+        (folder / "taken").mkdir(parents=True)
+        (folder / "taken" / "mine").write_text("x")
+    demo = shipped_folder("demo_runs") / "copper_lithium_fluoride"
+    ended = run(*(argument.format(folder, demo=demo) for argument in arguments))
+    shown = ended.stderr if status else ended.stdout
+    assert ended.returncode == status
+    assert shown.count("\n") == 1
+    assert not {"\x1b", "\x07", "\u202e"} & set(ended.stdout + ended.stderr)
+
+
 def test_a_closed_pipe_is_no_traceback():
     process = subprocess.Popen([*MODULE, "schema"], stdout=subprocess.PIPE, stderr=subprocess.PIPE)
     process.stdout.close()

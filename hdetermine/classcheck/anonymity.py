@@ -51,9 +51,16 @@ def group_codes(names: Sequence[str], key: int) -> list[str]:
     return [f"G-{digest[:length]}" for digest in digests]
 
 
-def shown_names(names: Sequence[str]) -> list[str]:
-    """Make names safe to show on a page or a terminal; an empty one becomes words."""
-    return [plain(name, LONGEST_NAME) or "(no name)" for name in names]
+def shown_names(names: Sequence[str], codes: Sequence[str]) -> list[str]:
+    """Make names safe to show on a page or a terminal, and tell them apart.
+
+    An empty one becomes words; those that look the same once they are shortened get their code.
+    """
+    labels = [plain(name, LONGEST_NAME) or "(no name)" for name in names]
+    return [
+        label if labels.count(label) == 1 else f"{plain(name, LONGEST_NAME // 2)} ({code})"
+        for name, label, code in zip(names, labels, codes, strict=True)
+    ]
 
 
 def file_stems(names: Sequence[str], codes: Sequence[str]) -> list[str]:

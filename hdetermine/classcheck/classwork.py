@@ -114,7 +114,7 @@ def check_class(
     found = check_groups(tasks, jobs, progress)
     names = [group.name for group in groups]
     codes = group_codes(names, seed)
-    labels = codes if anonymise else shown_names(names)
+    labels = codes if anonymise else shown_names(names, codes)
     stems = [code.lower() for code in codes] if anonymise else file_stems(names, codes)
     progress("comparing counts", 0, 1)
     screened = _screened(found, labels)
@@ -153,11 +153,11 @@ def _screened(found: Sequence[GroupFinding], labels: Sequence[str]) -> list[Grou
             same_group = mine.group == other.group
             if same_group and mine is not pair[0]:
                 continue
-            whose = "the same group" if same_group else f"group {labels[other.group]}"
+            whose = "the same group" if same_group else "another group"
+            partner = "" if same_group else labels[other.group]
             first_deg = float(mine.millidegrees[start]) / 1e3
-            by_group.setdefault(mine.group, []).append(
-                _stretch_remark(stretch, mine.label, f"{other.label} of {whose}", first_deg)
-            )
+            remark = _stretch_remark(stretch, mine.label, f"{other.label} of {whose}", first_deg)
+            by_group.setdefault(mine.group, []).append(replace(remark, partner=partner))
     screened = []
     for number, finding in enumerate(found):
         alarms: list[Remark] = []
@@ -176,7 +176,7 @@ def _stretch_remark(stretch: Stretch, where: str, other: str, first_deg: float) 
         where=where,
         title="identical counts",
         sentence=f"{stretch.length} successive counts {place} are the same as in {other}{same}. "
-        "Independent counting does not repeat itself like that; shared data or a copied file do.",
+        "Independent counting hardly ever repeats itself like that; one file read twice would.",
         statistic=float(stretch.length),
         figure="successive equal counts",
         threshold=f"chance below {FAMILY_CHANCE:.1g} in the class",

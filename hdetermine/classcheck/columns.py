@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 from hdetermine.classcheck.classwork import ClassFinding, GroupRow
 from hdetermine.classcheck.finding import VERDICT_WORDS
+from hdetermine.classcheck.screens import Remark
 from hdetermine.files.cells import Value
 
 
@@ -39,14 +40,18 @@ def slip_text(row: GroupRow) -> str:
 
 
 def alarm_text(row: GroupRow) -> str:
-    """Alarms of the screening, each kind once."""
-    titles: dict[str, list[str]] = {}
+    """Alarms of the screening, each kind once, with the groups that they concern too."""
+    kinds: dict[str, list[Remark]] = {}
     for alarm in row.finding.alarms:
-        titles.setdefault(alarm.title, []).append(alarm.where)
-    return "; ".join(
-        f"{title} ({wheres[0]}{', …' if len(wheres) > 1 else ''})"
-        for title, wheres in titles.items()
-    )
+        kinds.setdefault(alarm.title, []).append(alarm)
+    return "; ".join(_kind_text(title, alarms) for title, alarms in kinds.items())
+
+
+def _kind_text(title: str, alarms: list[Remark]) -> str:
+    wheres = list(dict.fromkeys(alarm.where for alarm in alarms))
+    place = f"{wheres[0]}{', …' if len(wheres) > 1 else ''}"
+    partners = dict.fromkeys(alarm.partner for alarm in alarms if alarm.partner)
+    return f"{title} ({place}{', as in ' if partners else ''}{', '.join(partners)})"
 
 
 def fault_text(row: GroupRow) -> str:

@@ -76,11 +76,11 @@ class PlanckComparison:
         if ratio < SMALL_RATIO:
             return (
                 f"The stated uncertainty is {1.0 / ratio:.2g} times smaller than these data "
-                "allow: spacing, zero, voltage scale and the shape of the limit belong into it, "
+                "allow: spacing, zero, voltage scale and the shape of the limit belong in it, "
                 "not only the scatter about the line."
             )
         if ratio > LARGE_RATIO:
-            return f"The stated uncertainty is {ratio:.2g} times larger than these data allow."
+            return f"The stated uncertainty is {ratio:.2g} times larger than these data ask for."
         return ""
 
 

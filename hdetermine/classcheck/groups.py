@@ -97,7 +97,7 @@ def find_groups(top: Path, out: Path) -> tuple[list[Group], tuple[str, ...]]:
     if not groups:
         raise InputError(
             f"{quoted(top.name)}: there is no group in it; a class folder has one sub-folder a "
-            f"group, or a table {CLAIM_TABLES[0]}."
+            f"group, or a table {' or '.join(CLAIM_TABLES)}."
         )
     return sorted(groups, key=lambda group: _sort_key(group.name)), remarks
 

@@ -45,8 +45,8 @@ WORDINGS: dict[str, Wording] = {
     "zero_offset": Wording(
         "zero offset of the goniometer not corrected",
         "The angles as read, without (or with the reversed) zero correction, give this number.",
-        "The characteristic lines show how far the goniometer's zero is off; that belongs "
-        "subtracted from every reading. A line with a free intercept shows it too.",
+        "The characteristic lines show how far the goniometer's zero is off; subtract that from "
+        "every reading. A line with a free intercept shows it too.",
     ),
     "dead_time": Wording(
         "dead time of the counter not corrected",

@@ -70,7 +70,7 @@ WORDINGS: dict[str, Wording] = {
         "line forced through the origin with an offset present",
         "The displayed voltages without the supply's offset, and a line through the origin, give "
         "this number.",
-        "With an offset present the line needs its intercept, or the offset belongs into U.",
+        "With an offset present the line needs its intercept, or the offset belongs in U.",
     ),
 }
 

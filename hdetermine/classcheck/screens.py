@@ -73,6 +73,9 @@ class Remark:
         plays no part.
     is_alarm : bool
         False for a note that questions nothing.
+    partner : str
+        Label of another group that it concerns; it belongs in the table of the class, not on a
+        page that is handed back.
     """
 
     where: str
@@ -83,6 +86,7 @@ class Remark:
     threshold: str = ""
     class_chance: float | None = None
     is_alarm: bool = True
+    partner: str = ""
 
 
 def raise_alarms(looks: list[Look], number_of_looks: int) -> list[Remark]:

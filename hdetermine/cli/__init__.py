@@ -14,6 +14,7 @@ import click
 
 from hdetermine import __version__
 from hdetermine.errors import InputError
+from hdetermine.files.plaintext import plain_text
 
 # One module a command, imported only when the command is used: help must come at once.
 COMMANDS: dict[str, tuple[str, str]] = {
@@ -90,16 +91,21 @@ def _status(arguments: list[str] | None) -> int:
     try:
         status = root.main(args=arguments, prog_name="hdetermine", standalone_mode=False)
     except InputError as error:
-        click.echo(f"hdetermine: {error}", err=True)
+        _say(str(error))
         return 2
     except click.ClickException as error:
-        click.echo(f"hdetermine: {error.format_message()}", err=True)
+        _say(error.format_message())
         return 2
     except BrokenPipeError:
         # Whoever read our output has left; nothing more can be said there, at the end neither.
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return 1
     return status if isinstance(status, int) else 0
+
+
+def _say(sentence: str) -> None:
+    """Print one line that no terminal obeys, even where a folder's name would steer it."""
+    click.echo(f"hdetermine: {plain_text(sentence)}", err=True)
 
 
 def _on_signals(handler: Callable[[int, FrameType | None], None]) -> None:

@@ -49,6 +49,7 @@ def command(
     from hdetermine.cli.progress import working
     from hdetermine.determination import determine
     from hdetermine.files.atomic import write_outputs
+    from hdetermine.files.plaintext import plain_text
     from hdetermine.files.resultfile import budget_csv, cutoffs_csv, result_json
     from hdetermine.files.runsheet import read_run
     from hdetermine.report.document import report_document
@@ -83,4 +84,5 @@ def command(
         write_outputs(target, outputs)
     if not quiet:
         click.echo("\n".join(summary_lines(result)))
-        click.echo(f"\n  Written to {click.format_filename(target)}: {', '.join(OUTPUTS)}")
+        place = plain_text(click.format_filename(target))
+        click.echo(f"\n  Written to {place}: {', '.join(OUTPUTS)}")

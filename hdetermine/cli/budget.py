@@ -47,6 +47,7 @@ def command(
     """
     from hdetermine.budget.suppose import study
     from hdetermine.files.atomic import write_outputs
+    from hdetermine.files.plaintext import plain_text
     from hdetermine.report.budget_files import budget_files
 
     model, beside = _model(source)
@@ -55,7 +56,8 @@ def command(
     target = out if out is not None else beside / "budget"
     write_outputs(target, outputs)
     _print(found, each_scan)
-    click.echo(f"Written to {click.format_filename(target)}: {', '.join(outputs)}")
+    place = plain_text(click.format_filename(target))
+    click.echo(f"Written to {place}: {', '.join(outputs)}")
 
 
 def _model(source: Path) -> tuple[MeasurementModel, Path]:

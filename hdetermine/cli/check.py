@@ -52,6 +52,7 @@ def command(
     from hdetermine.classcheck.summary import summary_lines
     from hdetermine.cli.progress import working
     from hdetermine.files.atomic import write_outputs
+    from hdetermine.files.plaintext import plain_text
     from hdetermine.report.templates import find_templates
 
     found_templates = find_templates(templates)
@@ -71,5 +72,7 @@ def command(
         write_outputs(target, outputs, retired=earlier_feedback(target))
     if not quiet:
         click.echo("\n".join(summary_lines(finding)))
-        click.echo(f"\n  Written to {click.format_filename(target)}: class.html, class.csv, "
-                   "class.xlsx, class.json, feedback")  # fmt: skip
+        place = plain_text(click.format_filename(target))
+        click.echo(
+            f"\n  Written to {place}: class.html, class.csv, class.xlsx, class.json, feedback"
+        )

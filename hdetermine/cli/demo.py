@@ -25,7 +25,7 @@ def command(name: str | None, folder: Path | None) -> None:
     """
     from hdetermine.errors import InputError
     from hdetermine.files.atomic import write_outputs
-    from hdetermine.files.plaintext import quoted
+    from hdetermine.files.plaintext import plain_text, quoted
     from hdetermine.files.shipped import shipped_folder
 
     shipped = shipped_folder("demo_runs")
@@ -44,4 +44,5 @@ def command(name: str | None, folder: Path | None) -> None:
     write_outputs(
         target, {path.relative_to(source).as_posix(): path.read_bytes() for path in files}
     )
-    click.echo(f"{len(files)} files of the simulated demo {name} are in {target}.")
+    place = plain_text(click.format_filename(target))
+    click.echo(f"{len(files)} files of the simulated demo {name} are in {place}.")
