@@ -29,6 +29,14 @@ def test_rates_without_dwell_ask(tmp_path):
     assert "rates" in sentence
 
 
+@pytest.mark.parametrize("rate", ["1e308", "1e13", "-1", "-1e308"])
+def test_rates_that_no_counter_gives(tmp_path, rate):
+    """1e308 per second times 10 s printed a warning of numpy above the sentence."""
+    sentence = refusal(tmp_path, f"theta;cps\n5.0;0.3\n5.1;{rate}\n5.2;1\n")
+    assert "line 3, column 2" in sentence
+    assert "correct it" in sentence
+
+
 def test_counts_or_rate_unclear_asks(tmp_path):
     table = "theta;20 kV\n5.0;3\n5.1;1\n5.2;12\n"
     assert 'ordinate = "counts"' in refusal(tmp_path, table)

@@ -245,6 +245,20 @@ FAULTS = [
     (GAIN, "gain = { value = 1.0, u = 0.1, dof = 0 }", ["dof = 0", "from 1 up"]),
     (GAIN, "gain = { value = 1.0, u = 0.5 }", ["tube.voltage.gain", "reach -0.5", "smaller"]),
     (GAIN, "gain = { value = 1.0, u = 0.1, source = 3 }", ["source", '"3"']),
+    # Uncertainties so large that their squares overflow ended in a traceback.
+    (GAIN, "repeatability_kV = { value = 0, u = 1e308 }", ["repeatability_kV", "beyond -100 kV"]),
+    (GAIN, "offset_kV = { value = 0, half_width = 1e308 }", ["offset_kV", "beyond -100 kV"]),
+    ("90.0, u = 10.0", "90.0, u = 1e308", ["dead_time_us", "smaller uncertainty"]),
+    (
+        "value = 4.5, half_width = 0.3",
+        "value = 4.5, u = 1e308",
+        ["work_function", "smaller uncertainty"],
+    ),
+    (
+        "step_deg = 0.1",
+        "kernel_triangular_fraction = { value = 0.5, u = 1e308 }",
+        ["kernel", "beyond 0 it has no meaning"],
+    ),
     (GAIN, "repeatability_kV = 0.1", ["repeatability_kV", "found 0.1", "offset_kV"]),
     (GAIN, "ripple = 5", ["ripple", "found 5", "not percent"]),
     (GAIN, "offset_kV = 150", ["offset_kV", "found 150", "kV"]),
@@ -359,6 +373,14 @@ def test_folder_faults(tmp_path):
 def test_too_many_scans(tmp_path):
     sheet = SHEET + '\n[[scan]]\nfile = "a.csv"\ntube_voltage_kV = 20\n' * limits.MAX_SCANS
     assert "201 scans are more than the 200" in refusal(write_run(tmp_path / "run", sheet))
+
+
+def test_too_many_points_in_all_scans_together(tmp_path, monkeypatch):
+    monkeypatch.setattr("hdetermine.files.runsheet.MAX_RUN_POINTS", 30)
+    assert read_run(write_run(tmp_path / "run")).scans[0].counts.size == 20
+    other = '\n[[scan]]\nname = "b"\nfile = "a.csv"\ntube_voltage_kV = 20\ndwell_s = 1\n'
+    sentence = refusal(write_run(tmp_path / "run", SHEET + other))
+    assert "40 points in all its scans are more than the 30" in sentence
 
 
 def test_many_large_files(tmp_path, monkeypatch):

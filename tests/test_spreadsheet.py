@@ -161,6 +161,26 @@ def test_zip_bomb(tmp_path):
     assert "bytes when unpacked" in refusal(tmp_path, data)
 
 
+def test_zip_bomb_that_understates_its_size(tmp_path):
+    """A part said to unpack to 100 bytes is not unpacked further."""
+    data = bytearray(with_part(xlsx(Run=ROWS), "xl/media/x.xml", b" " * 10_000_000))
+    entry = data.rindex(b"xl/media/x.xml") - 46
+    assert data[entry : entry + 4] == b"PK\x01\x02"
+    data[entry + 24 : entry + 28] = (100).to_bytes(4, "little")
+    assert "damaged" in refusal(tmp_path, bytes(data))
+
+
+def test_many_sheets_rows_and_columns(tmp_path):
+    sheets = {f"s{i}": ROWS for i in range(limits.MAX_SHEETS + 1)}
+    assert "101 sheets" in refusal(tmp_path, xlsx(**sheets))
+    wide = ["theta"] + ["counts"] * limits.MAX_COLUMNS
+    assert "301 columns" in refusal(tmp_path, xlsx(Run=[wide, [1.0] * len(wide)]))
+    deep = f'<row r="{limits.MAX_ROWS + 1}"><c><v>1</v></c></row>'
+    deep = SHEET_XML.format(deep)
+    data = with_part(xlsx(Run=ROWS), "xl/worksheets/sheet1.xml", deep.encode())
+    assert "100001 rows" in refusal(tmp_path, data)
+
+
 def test_many_parts(tmp_path):
     stream = io.BytesIO()
     with zipfile.ZipFile(stream, "w") as archive:

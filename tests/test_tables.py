@@ -211,10 +211,31 @@ def test_faults_are_named_in_one_sentence(tmp_path, table, named):
         assert word in sentence
 
 
+MANY = {
+    "lines": ("theta;counts\n" + "5;1\n" * limits.MAX_ROWS, "100001 lines"),
+    "cells": ((";".join(["5"] * 250) + "\n") * 8001, "2000250 cells"),
+    "counts": (f"theta;counts\n5;1\n6;{limits.MAX_COUNTS + 1}\n", "line 3, column 2"),
+    "counts of a rate": (f"theta;cps\n5;1\n6;{limits.MAX_COUNTS // 10 + 1}\n", "any counter"),
+}
+
+
+@pytest.mark.parametrize(("table", "words"), MANY.values(), ids=MANY)
+def test_more_than_is_read(tmp_path, table, words):
+    assert words in refusal(tmp_path, table)
+
+
 def test_table_too_large(tmp_path, monkeypatch):
     assert "larger than" in refusal(tmp_path, b"5 3\n" * (limits.MAX_TABLE_BYTES // 4 + 1))
     rows = "".join(f"{i / 1000:.3f};1\n" for i in range(1, limits.MAX_POINTS + 2))
     assert "points of a scan" in refusal(tmp_path, "theta;counts\n" + rows)
+
+
+@pytest.mark.parametrize("header", ["theta/rad", "2theta/rad", "lambda/nm", "theta/deg"])
+@pytest.mark.parametrize("value", ["1e308", "-1e308"])
+def test_an_abscissa_that_overflows(tmp_path, header, value):
+    """Turned into other units it printed a warning of numpy above the sentence."""
+    sentence = refusal(tmp_path, f"{header};counts\n0.1;3\n{value};4\n0.3;5\n")
+    assert "line 3, column 1" in sentence
 
 
 def test_twenty_thousand_points(tmp_path):

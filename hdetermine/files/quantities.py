@@ -210,21 +210,22 @@ def settle(rule: InputRule, stated: StatedQuantity | None, where: str) -> Quanti
 def _check_support(rule: InputRule, stated: StatedQuantity, where: str) -> None:
     """Refuse a distribution that reaches where the model is undefined.
 
-    A normal or t distribution has no ends; it is held against the limits at three standard
-    uncertainties, and only where the estimate itself must stay off the limit.
+    A normal or t distribution has no ends; it is held against a limit at three standard
+    uncertainties, and only where the estimate itself must stay off that limit or the uncertainty
+    is wider than the limits.
     """
     assert stated.u is not None
     divisor = HALF_WIDTH_DIVISOR.get(stated.distribution)
     reach = stated.u * (_SUPPORT_IN_U if divisor is None else divisor)
     low, high = rule.support
-    if divisor is None and rule.allowed[0] <= low:
-        return
     slack = 1e-12 * max(1.0, abs(stated.value))
     unit = "" if rule.unit == "1" else f" {rule.unit}"
-    for end, limit, beyond in (
-        (stated.value - reach, low, low - (stated.value - reach)),
-        (stated.value + reach, high, stated.value + reach - high),
+    for end, limit, beyond, is_off in (
+        (stated.value - reach, low, low - (stated.value - reach), rule.allowed[0] > low),
+        (stated.value + reach, high, stated.value + reach - high, rule.allowed[1] < high),
     ):
+        if divisor is None and not is_off and stated.u <= high - low:
+            continue
         if beyond > slack or (divisor is None and beyond >= 0.0):
             raise InputError(
                 f"{where}: key {rule.key}: its uncertainty lets it reach {end:.4g}{unit}, but "

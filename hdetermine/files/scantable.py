@@ -39,6 +39,7 @@ class Points:
     remarks: tuple[str, ...]
 
 
+@np.errstate(over="ignore")  # what overflows is refused as out of range
 def read_points(table: Table, entry: ScanPart, spacing_pm: float, sheet: str) -> Points:
     """Read the points of one scan.
 
