@@ -5,6 +5,8 @@ from __future__ import annotations
 import io
 import math
 import random
+import re
+from pathlib import Path
 
 import openpyxl
 import pytest
@@ -261,3 +263,31 @@ def test_mutated_claims_end_in_a_claim_or_a_sentence(tmp_path):
                     assert math.isnan(value) or (math.isfinite(value) and value != 0.0)
                 outcomes.add("read")
     assert outcomes == {"read", "refused"}
+
+
+def test_a_message_called_the_column_of_h_value(tmp_path):
+    entries, _ = table(tmp_path, "group,h [J s],U\nalder,abc,1e-36\nbirch,6.6e-34,abc\n")
+    assert [entry.claim for entry in entries] == [None, None]
+    assert entries[0].fault.startswith('claims.csv, line 2, h: "abc" is not a number')
+    assert entries[1].fault.startswith('claims.csv, line 3, U: "abc" is not a number')
+
+
+def test_claims_of_the_readme_are_read(tmp_path):
+    readme = (Path(__file__).resolve().parents[1] / "README.md").read_text("utf-8")
+    section = readme.split("\n## Checking a class\n")[1].split("\n## ")[0]
+    blocks = dict(re.findall(r"```(\w+)\n(.*?)```", section, re.S))
+    claim = sheet(tmp_path, blocks["toml"])
+    assert claim.standard_uncertainty_J_s * 1e34 == pytest.approx(0.04)
+    assert claim.cutoffs[0].wavelength_pm.value == 61.2
+    (alder, birch), remarks = table(tmp_path, blocks["text"])
+    assert remarks == ()
+    assert alder.claim.standard_uncertainty_J_s * 1e34 == pytest.approx(0.04)
+    assert [cutoff.tube_voltage_kV for cutoff in alder.claim.cutoffs] == [20.0, 25.0]
+    assert birch.claim.h.step * 1e34 == pytest.approx(0.1)
+    cells = [row.split("|")[1] for row in section.splitlines() if row.startswith("| `")]
+    headers = [name for cell in cells for name in re.findall(r"`([^`]+)`", cell)]
+    assert len(headers) == 9
+    for header in headers:
+        assert understand_header(header, "README").role != "other", header
+    for written in re.findall(r"`(6\.63[^`]*)`", section):
+        assert read_numeral(written, "README").value * 1e34 == pytest.approx(6.63)

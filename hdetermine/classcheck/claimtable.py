@@ -25,6 +25,8 @@ from hdetermine.files.runfolder import read_bytes
 from hdetermine.files.texttable import decode, is_comment
 
 _SEPARATORS = (";", "\t", ",", "|")
+_SHOWN: dict[Role, str] = {"value": "h", "expanded": "U"}
+"""What a message calls a column, where that is not its role."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -201,7 +203,9 @@ def _claim(
         raise InputError(f"{where}: h and its uncertainty have different units; use one.")
     numbers: tuple[Role, ...] = ("value", "u", "expanded", "k")
     written: dict[str, Numeral | str | None] = {
-        role: _number(by_role[role][1], f"{where}, {role}") for role in numbers if role in by_role
+        role: _number(by_role[role][1], f"{where}, {_SHOWN.get(role, role)}")
+        for role in numbers
+        if role in by_role
     }
     written["unit"] = str(unit_cell) if unit_cell is not None else next(iter(units), None)
     if written.get("expanded") is None and written.get("u") is None:
