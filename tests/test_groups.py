@@ -126,9 +126,17 @@ def test_hostile_names_become_safe_labels_and_files(tmp_path):
         assert 0 < len(stem) <= 80
         assert set(stem) <= set("abcdefghijklmnopqrstuvwxyz0123456789_-")
         assert stem not in ("con", "x..")
-    for label in shown_names(names):
+    for label in shown_names(names, group_codes(names, 1)):
         assert len(label) <= 60
         assert not any(ord(one) < 32 or one == "\u202e" for one in label)
+
+
+def test_long_names_that_differ_at_the_end_looked_the_same():
+    names = ["y" * 300, "y" * 301, "alder", "", " "]
+    labels = shown_names(names, group_codes(names, 1))
+    assert len(set(labels)) == len(names)
+    assert labels[2] == "alder"
+    assert all(len(label) <= 60 for label in labels)
 
 
 def test_codes_stay_when_groups_are_added_and_depend_on_the_key():

@@ -58,8 +58,8 @@ def shown_names(names: Sequence[str], codes: Sequence[str]) -> list[str]:
     """
     labels = [plain(name, LONGEST_NAME) or "(no name)" for name in names]
     return [
-        label if labels.count(label) == 1 else f"{plain(name, LONGEST_NAME // 2)} ({code})"
-        for name, label, code in zip(names, labels, codes, strict=True)
+        label if labels.count(label) == 1 else f"{plain(label, LONGEST_NAME // 2)} ({code})"
+        for label, code in zip(labels, codes, strict=True)
     ]
 
 
