@@ -222,7 +222,8 @@ A copper tube, a lithium fluoride crystal (200), six voltages from 20 to 35 kV i
 stand partly in `claims.csv`, partly in each group's `claim.toml`.
 
 `truth_table.csv` tells what was done to each group: the verdict that the check should reach, the \
-slip that it should name first, and what the screening should find. To see what it makes of them:
+slip that it should name first, and what the screening should find, in the words of `class.json` \
+(`verdict`, `slips.codes`, `screening.title`). To see what it makes of them:
 
     hdetermine check class_of_twelve -o somewhere
 """
