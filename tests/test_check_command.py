@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import csv
+import html
 import io
 import json
+import re
 import shutil
 import subprocess
 import sys
@@ -100,6 +102,76 @@ def test_codes_in_place_of_names_everywhere(demo, tmp_path):
             assert [name for name in names if name in text] == [], path
     assert not any(name in result.output for name in names)
     assert json.loads((tmp_path / "class.json").read_text())["provenance"]["seed"] is None
+
+
+def feedback_text(out, group):
+    """Text of a page of feedback, without markup and with plain blanks."""
+    page = (out / "feedback" / f"{group}.html").read_text()
+    bare = re.sub(r"<(style|script)>.*?</\1>|<[^>]+>", " ", page, flags=re.S)
+    return " ".join(html.unescape(bare).split())
+
+
+def test_a_page_that_is_handed_back_named_the_other_group(demo):
+    _, out, _ = demo
+    found = groups_of(out)
+    for group in found:
+        text = feedback_text(out, group)
+        assert [name for name in found if name != group and re.search(rf"\b{name}\b", text)] == []
+    rows = csv.DictReader(io.StringIO((out / "class.csv").read_text()))
+    screening = {row["group"]: row["screening"] for row in rows}
+    assert screening["alder"] == "identical counts (scan 4 (29 kV), as in oak)"
+    assert screening["oak"] == "identical counts (scan 4 (29 kV), as in alder)"
+
+
+def test_claimed_cutoffs_that_do_not_give_h_left_open_what_they_give(demo):
+    _, out, _ = demo
+    rowan = groups_of(out)["rowan"]
+    products = [
+        line["claimed_wavelength_pm"] * line["tube_voltage_kV"] for line in rowan["cutoffs"]
+    ]
+    expected = sum(products) / len(products) * 1e-9 * 1.602176634e-19 / 299792458.0
+    assert rowan["planck_of_claimed_cutoffs_J_s"] / expected == pytest.approx(1.0, abs=1e-9)
+    text = feedback_text(out, "rowan")
+    assert f"They give h = {expected * 1e34:.3f} × 10⁻³⁴ J s." in text
+    assert "λ from data" not in text  # no columns of dashes
+
+
+def test_pages_without_usable_counts_said_that_they_were_analysed(demo):
+    _, out, _ = demo
+    assert "analysed again" in feedback_text(out, "birch")
+    for group in ("pine", "rowan"):
+        assert "analysed again" not in feedback_text(out, group)
+
+
+def test_a_claim_in_electronvolts_was_shown_in_joules_only(demo):
+    _, out, _ = demo
+    assert "The claim of 4.152 × 10⁻¹⁵ eV s is h = (6.652 ± 0.099)" in feedback_text(out, "birch")
+    assert "The claim is h = (6.581 ± 0.099)" in feedback_text(out, "alder")
+
+
+def test_two_uncertainties_stood_side_by_side_without_saying_which(demo):
+    _, out, _ = demo
+    text = feedback_text(out, "alder")
+    assert "J s, with its expanded uncertainty; it agrees with the SI value." in text
+    assert "J s, with its standard uncertainty: 1.27 % below" in text
+    page = (out / "class.html").read_text()
+    assert page.count("± U") == page.count("± u") == 13  # the heading, and a label in each row
+
+
+def test_two_slips_together_were_called_one(demo):
+    _, out, _ = demo
+    text = feedback_text(out, "larch")
+    assert "Two slips of the catalogue together would produce these numbers." in text
+    assert "Both together give this number" in text
+    assert "One slip of the catalogue would produce these numbers." in feedback_text(out, "cedar")
+
+
+def test_alarms_of_the_screening_were_missing_from_the_summaries(demo):
+    _, out, _ = demo
+    page = (out / "class.html").read_text()
+    assert "<strong>3</strong> <span>with counts to look at again" in page
+    assert "asks for a second look" in feedback_text(out, "maple")
+    assert "asks for a second look" not in feedback_text(out, "birch")
 
 
 def small_class(top, names):

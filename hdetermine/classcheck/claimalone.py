@@ -53,6 +53,12 @@ def check_alone(claim: Claim, crystal: Crystal | None) -> Explanation:
     return Explanation(True, inner.agrees, inner.ordinary, outer.slips)
 
 
+def planck_of_cutoffs_J_s(claim: Claim, crystal: Crystal | None) -> float:
+    """Work out h from the claim's own cutoffs, J s; nan if they do not tell."""
+    own = _evidence_of(claim, crystal)
+    return math.nan if own is None else own.planck_J_s
+
+
 def explain_number_alone(claim: Claim, crystal: Crystal | None) -> Explanation:
     """Explain a claim of h without cutoffs, and without data, against the SI value."""
     evidence = _foreseen(np.array(USUAL_VOLTAGES_kV), crystal)

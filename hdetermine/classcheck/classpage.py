@@ -68,6 +68,7 @@ def class_page(finding: ClassFinding, templates: Templates) -> bytes:
         "lines": [_line(row) for row in finding.rows],
         "counts": count_verdicts(finding),
         "remarks": [sentence(remark) for remark in finding.remarks],
+        "screened": sum(bool(row.finding.alarms) for row in finding.rows),
         "picture": class_picture(finding),
         "script": Markup(script),
         "class_chance": f"{CLASS_CHANCE:.0%}".replace("%", "\N{NARROW NO-BREAK SPACE}%"),

@@ -6,7 +6,6 @@ import datetime
 import io
 import json
 import math
-import os
 import re
 import zipfile
 from typing import Any
@@ -18,6 +17,7 @@ from hdetermine.classcheck.comparison import CutoffLine
 from hdetermine.classcheck.screens import Remark
 from hdetermine.classcheck.slip import NamedSlip
 from hdetermine.files.cells import Value, csv_bytes, inert_text
+from hdetermine.files.sourcedate import source_date
 from hdetermine.physics.reference import PLANCK_CONSTANT_J_S
 
 SCHEMA = "hdetermine-class/1"
@@ -70,11 +70,8 @@ def _write(cell: Any, value: Value) -> int:
 
 def _without_clock(content: bytes) -> bytes:
     """Pack a spreadsheet again without the time of writing: same content, same bytes."""
-    stated = os.environ.get("SOURCE_DATE_EPOCH", "")
-    when = _EARLIEST
-    if stated.isdecimal() and int(stated) < 4_000_000_000:
-        moment = datetime.datetime.fromtimestamp(int(stated), tz=datetime.UTC)
-        when = max(moment.replace(tzinfo=None), _EARLIEST)
+    moment = datetime.datetime.fromtimestamp(source_date() or 0, tz=datetime.UTC)
+    when = max(moment.replace(tzinfo=None), _EARLIEST)
     stamp = f"{when.isoformat()}Z".encode()
     packed = io.BytesIO()
     with (
@@ -123,6 +120,7 @@ def _group(row: GroupRow) -> dict[str, Any]:
         "claim_fault": found.claim_fault or None,
         "reanalysis": _fields(found.reanalysis),
         "claim": _fields(found.planck),
+        "planck_of_claimed_cutoffs_J_s": _finite(found.planck_of_cutoffs_J_s),
         "cutoffs": [_cutoff(line) for line in found.cutoffs],
         "slips": [_slip(slip) for slip in found.slips],
         "screening": [_remark(remark) for remark in found.remarks],

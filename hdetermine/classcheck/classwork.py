@@ -176,7 +176,8 @@ def _stretch_remark(stretch: Stretch, where: str, other: str, first_deg: float) 
         where=where,
         title="identical counts",
         sentence=f"{stretch.length} successive counts {place} are the same as in {other}{same}. "
-        "Independent counting hardly ever repeats itself like that; one file read twice would.",
+        "Independent counting hardly ever repeats itself like that; one record used in both "
+        "places does.",
         statistic=float(stretch.length),
         figure="successive equal counts",
         threshold=f"chance below {FAMILY_CHANCE:.1g} in the class",

@@ -263,9 +263,8 @@ def _named(
     words = [WORDINGS[code] for code in codes]
     sentence = words[0].sentence
     if len(words) == 2:
-        sentence = (
-            f"Two together give this number. First: {words[0].sentence} Second: {words[1].sentence}"
-        )
+        # Each sentence by itself says "gives this number", which one alone does not.
+        sentence = "Both together give this number; one alone does not, or not as well."
     return NamedSlip(
         codes=codes,
         title=" and ".join(word.title for word in words),

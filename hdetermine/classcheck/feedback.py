@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 import math
+import re
 from dataclasses import dataclass
 
 from hdetermine.classcheck.classwork import GroupRow
 from hdetermine.classcheck.finding import VERDICT_WORDS, GroupFinding
+from hdetermine.classcheck.numeral import Numeral
 from hdetermine.classcheck.screens import Remark
 from hdetermine.classcheck.slip import NamedSlip
 from hdetermine.physics.reference import PLANCK_CONSTANT_J_S
 from hdetermine.report.plaintext import plain, sentence
+from hdetermine.report.rounding import THIN
 from hdetermine.report.table import (
     Cell,
     Table,
@@ -57,6 +60,8 @@ class Feedback:
         Most specific first.
     slip_lead : str
         How the list of slips is to be read.
+    reading : str
+        How the page is to be read.
     simulated : bool
         True if the counts were computed.
     """
@@ -69,6 +74,7 @@ class Feedback:
     uncertainty: str
     slips: tuple[SlipText, ...]
     slip_lead: str
+    reading: str
     simulated: bool
 
 
@@ -88,6 +94,7 @@ def feedback_of(row: GroupRow) -> Feedback:
             _slip_text(slip, bool(found.claim and found.claim.cutoffs)) for slip in found.slips
         ),
         slip_lead=_slip_lead(found),
+        reading=_reading(found),
         simulated=found.simulated,
     )
 
@@ -105,20 +112,26 @@ def _summary(found: GroupFinding) -> str:
         scans = "scan" if reanalysis.scans == 1 else "scans"
         parts.append(
             f"From {reanalysis.used} of {reanalysis.scans} {scans} the re-analysis finds "
-            f"h{EQUALS}{found_h}, which {inside} the SI value within its expanded uncertainty."
+            f"h{EQUALS}{found_h}, with its expanded uncertainty; it {inside} the SI value."
         )
-    if planck is not None and reanalysis is not None:
-        claimed = _planck(planck.claimed_J_s, planck.claimed_u_J_s)
+    if planck is not None:
+        stated = planck.claimed_u_J_s > 0.0
         parts.append(
-            f"The claim is h{EQUALS}{claimed}: {_distance(planck.relative_difference)} what "
-            "follows from the same data."
-        )
-    elif planck is not None:
-        claimed = _planck(planck.claimed_J_s, planck.claimed_u_J_s)
-        parts.append(
-            f"The claim is h{EQUALS}{claimed}: {_distance(planck.relative_deviation)} the SI value."
+            f"The claim{_as_written(found)} is "
+            f"h{EQUALS}{_planck(planck.claimed_J_s, planck.claimed_u_J_s)}"
+            f"{', with its standard uncertainty' if stated else ''}: "
+            + (
+                f"{_distance(planck.relative_deviation)} the SI value."
+                if reanalysis is None
+                else f"{_distance(planck.relative_difference)} what follows from the same data."
+            )
         )
     parts.append(_VERDICT_SENTENCES.get(found.verdict, ""))
+    if found.verdict in ("consistent", "inconsistent"):
+        own = digits(found.planck_of_cutoffs_J_s, 4, "J s").text
+        parts.append(f"They give h{EQUALS}{own}.")
+    if found.alarms:
+        parts.append("The screening of the counts asks for a second look; see the table below.")
     return " ".join(part for part in parts if part)
 
 
@@ -132,6 +145,34 @@ _VERDICT_SENTENCES = {
     "inconsistent": "The claimed cutoffs do not give the claimed h.",
     "alone": "Without data and cutoffs the claim can only be set beside the SI value.",
 }
+
+
+def _as_written(found: GroupFinding) -> str:
+    """Repeat a claim in eV s as it was written, for the page goes on in J s."""
+    claim = found.claim
+    if claim is None or claim.h is None or claim.unit == "J s":
+        return ""
+    return f" of {_written(claim.h)} {claim.unit}"
+
+
+def _written(number: Numeral) -> str:
+    places = 4
+    if number.step > 0.0 and number.value != 0.0:
+        places = math.floor(math.log10(abs(number.value))) - round(math.log10(number.step)) + 1
+    return digits(number.value, min(max(places, 1), 9)).text
+
+
+def _reading(found: GroupFinding) -> str:
+    if found.reanalysis is None and found.claim is None:
+        return "Once this is mended, the check can be run again."
+    if found.reanalysis is None:
+        compared = "Without usable counts the numbers can only be compared with each other."
+    else:
+        compared = (
+            "The counts were analysed again by a fit of the smeared limit in every scan, and "
+            "compared with the numbers that were handed in."
+        )
+    return f"{compared} The page names what would produce a number; it does not know what was done."
 
 
 def _planck(value: float, u: float) -> str:
@@ -158,7 +199,7 @@ def _comparison(found: GroupFinding) -> Table | None:
         u = reanalysis.standard_uncertainty_J_s
         deviation = percent(reanalysis.relative_deviation)
         rows.append([
-            words("from the data"), with_uncertainty(reanalysis.planck_J_s, u),
+            words("data"), with_uncertainty(reanalysis.planck_J_s, u),
             digits(u / reanalysis.planck_J_s * 100.0, 2, "%"), deviation,
             decimals(reanalysis.E_n, 2),
         ])  # fmt: skip
@@ -171,21 +212,19 @@ def _comparison(found: GroupFinding) -> Table | None:
         deviation = words(f"× {digits(ratio, 3).text}") if far else percent(
             planck.relative_deviation)  # fmt: skip
         rows.append([
-            words("claimed"), value, digits(100.0 * abs(u / planck.claimed_J_s), 2, "%"),
+            words("claim"), value, digits(100.0 * abs(u / planck.claimed_J_s), 2, "%"),
             deviation, decimals(planck.E_n, 2),
         ])  # fmt: skip
-    rows.append([
-        words("SI value, exact"), digits(PLANCK_CONSTANT_J_S, 9), digits(None), digits(None),
-        digits(None),
-    ])  # fmt: skip
+    exact = digits(PLANCK_CONSTANT_J_S, 9, "J s").text
     note = (
+        f"The SI value is exactly {exact}. "
         "In parentheses the standard uncertainty in units of the last place. Eₙ is the deviation "
         "from the SI value over twice the standard uncertainty (over U for the data); between "
         "−1 and 1 they agree."
     )
     return table(
         "planck", "Planck constant",
-        ("source", "h / J s", "u(h)/h", "deviation from the SI value", "Eₙ"),
+        ("source", "h / J s", "u(h)/h", "from the SI value", "Eₙ"),
         rows, numeric=(1, 2, 3, 4), note=note,
     )  # fmt: skip
 
@@ -195,24 +234,29 @@ def _cutoffs(found: GroupFinding) -> Table | None:
         return None
     with_angle = any(math.isfinite(line.claimed_angle_deg) for line in found.cutoffs)
     with_length = any(math.isfinite(line.claimed_wavelength_pm) for line in found.cutoffs)
-    headings = ["tube voltage / kV", "angle from data / °", "λ from data / pm"]
+    with_data = any(math.isfinite(line.wavelength_pm) for line in found.cutoffs)
+    headings = ["tube voltage / kV"]
+    headings += ["angle from data / °", "λ from data / pm"] if with_data else []
     headings += ["claimed angle / °"] if with_angle else []
     headings += ["claimed λ / pm"] if with_length else []
-    headings += ["claim over data"] if with_angle or with_length else []
+    compared = with_data and (with_angle or with_length)
+    headings += ["claim over data"] if compared else []
     rows = []
     for line in found.cutoffs:
-        row = [
-            digits(line.tube_voltage_kV, 3), decimals(line.angle_deg, 2),
-            with_uncertainty(line.wavelength_pm, line.standard_uncertainty_pm),
-        ]  # fmt: skip
+        row = [digits(line.tube_voltage_kV, 3)]
+        if with_data:
+            row.append(decimals(line.angle_deg, 2))
+            row.append(with_uncertainty(line.wavelength_pm, line.standard_uncertainty_pm))
         row += [decimals(line.claimed_angle_deg, 2)] if with_angle else []
         row += [digits(line.claimed_wavelength_pm, 4)] if with_length else []
-        row += [_ratio(line.relative_difference)] if with_angle or with_length else []
+        row += [_ratio(line.relative_difference)] if compared else []
         rows.append(row)
     return table(
-        "cutoffs", "Cutoffs", headings, rows, numeric=range(1, len(headings)),
-        note="Angles are glancing angles, corrected for the goniometer's zero. The uncertainty is "
-        "that of each cutoff alone, without what moves all of them together.",
+        "cutoffs", "Cutoffs" if with_data else "Claimed cutoffs", headings, rows,
+        numeric=range(1, len(headings)),
+        note="Angles from the data are glancing angles, corrected for the goniometer's zero. The "
+        "uncertainty is that of each cutoff alone, without what moves all of them together."
+        if with_data else "",
     )  # fmt: skip
 
 
@@ -265,6 +309,8 @@ def _figures(remark: Remark) -> str:
 def _slip_lead(found: GroupFinding) -> str:
     if not found.slips:
         return ""
+    if len(found.slips) == 1 and len(found.slips[0].codes) == 2:
+        return "Two slips of the catalogue together would produce these numbers."
     if len(found.slips) == 1:
         return "One slip of the catalogue would produce these numbers."
     return (
@@ -280,9 +326,15 @@ def _slip_text(slip: NamedSlip, with_cutoffs: bool) -> SlipText:
         value = _planck(slip.predicted_J_s, 0.0)
         prediction = f"{source} it gives h{EQUALS}{value}."
     return SlipText(
-        title=_capital(slip.title),
-        sentence=slip.sentence,
+        title=_together(_capital(slip.title)),
+        sentence=_together(slip.sentence),
         note=plain(slip.note),
         prediction=prediction,
-        remedy=slip.remedy,
+        remedy=_together(slip.remedy),
     )
+
+
+def _together(text: str) -> str:
+    """Keep units and grouped digits on one line."""
+    text = re.sub(r"\b(J|eV) s\b", "\\1\N{NO-BREAK SPACE}s", text)
+    return re.sub(r"(?<=\d) (?=\d{3}\b)", THIN, text)

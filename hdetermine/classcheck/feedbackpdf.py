@@ -12,11 +12,6 @@ from hdetermine.report.templates import Templates
 
 TEMPLATE = "feedback.typ"
 SLIPS_HEADING = "What would produce these numbers"
-READING = (
-    "The counts were analysed again by a fit of the smeared limit in every scan. This page "
-    "compares that with the numbers that were handed in. It names what would produce a number; "
-    "it does not know what was done."
-)
 
 
 def feedback_pdf(row: GroupRow, title: str, templates: Templates) -> bytes:
@@ -33,7 +28,6 @@ def feedback_pdf(row: GroupRow, title: str, templates: Templates) -> bytes:
         "class_title": title,
         "program": f"hdetermine {__version__}",
         "slips_heading": SLIPS_HEADING,
-        "reading": READING,
         "wording": templates.wording(),
         "feedback": {**asdict(feedback), "tables": [table_data(one) for one in feedback.tables]},
     }

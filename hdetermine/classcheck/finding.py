@@ -77,6 +77,8 @@ class GroupFinding:
         Of the claim by the group's own data.
     itself : Explanation or None
         Of the claim by its own cutoffs, where there are no usable data.
+    planck_of_cutoffs_J_s : float
+        h that the claimed cutoffs give, where there are no usable data; else nan.
     statement : tuple of NamedSlip
         Slips in the statement of the uncertainty.
     shortcuts : tuple of Shortcut
@@ -100,6 +102,7 @@ class GroupFinding:
     cutoffs: tuple[CutoffLine, ...] = ()
     explanation: Explanation | None = None
     itself: Explanation | None = None
+    planck_of_cutoffs_J_s: float = math.nan
     statement: tuple[NamedSlip, ...] = ()
     shortcuts: tuple[Shortcut, ...] = ()
     looks: tuple[Look, ...] = ()

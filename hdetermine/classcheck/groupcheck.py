@@ -11,7 +11,11 @@ import numpy as np
 from hdetermine.classcheck.alignment import align
 from hdetermine.classcheck.arithmetic import line_through_origin
 from hdetermine.classcheck.claim import Claim
-from hdetermine.classcheck.claimalone import check_alone, explain_number_alone
+from hdetermine.classcheck.claimalone import (
+    check_alone,
+    explain_number_alone,
+    planck_of_cutoffs_J_s,
+)
 from hdetermine.classcheck.comparison import compare_cutoffs, compare_planck
 from hdetermine.classcheck.evidence import Evidence, gather_evidence
 from hdetermine.classcheck.explanation import explain
@@ -130,6 +134,7 @@ def _without_reanalysis(group: Group, fault: str, crystal: Crystal | None) -> Gr
         planck=None if claim.h is None else compare_planck(claim, np.nan, np.nan),
         cutoffs=compare_cutoffs(claim, None),
         itself=itself,
+        planck_of_cutoffs_J_s=planck_of_cutoffs_J_s(claim, crystal),
         statement=statement_slips(claim),
     )
 
