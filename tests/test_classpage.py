@@ -4,9 +4,11 @@ from __future__ import annotations
 
 import base64
 import hashlib
+import io
 import json
 import re
 import shutil
+import zipfile
 from pathlib import Path
 
 import pytest
@@ -118,6 +120,18 @@ def test_same_finding_same_bytes():
     for make in (class_csv, class_json, class_xlsx, lambda f: class_page(f, TEMPLATES)):
         assert make(FINDING) == make(FINDING)
     assert json.loads(class_json(FINDING))["groups"][1]["slips"][0]["codes"] == ["double_angle"]
+
+
+@pytest.mark.parametrize(
+    ("stated", "year"), [("1700000000", 2023), ("0", 1980), ("9" * 5000, 1980), ("", 1980)]
+)
+def test_the_spreadsheet_bears_the_date_of_the_environment(monkeypatch, stated, year):
+    """Never that of the clock; one beyond every calendar counts as none."""
+    monkeypatch.setenv("SOURCE_DATE_EPOCH", stated)
+    with zipfile.ZipFile(io.BytesIO(class_xlsx(FINDING))) as archive:
+        assert {info.date_time[0] for info in archive.infolist()} == {year}
+        core = archive.read("docProps/core.xml").decode()
+    assert re.findall(r">(\d{4})-", core) == [str(year)] * 2
 
 
 def test_picture_marks_what_lies_outside():

@@ -242,6 +242,19 @@ def test_date_from_the_environment_where_the_run_has_none(monkeypatch):
 
 
 @pytest.mark.parametrize(
+    ("stated", "year"),
+    [("4000000000", 2096), ("4000000001", 1970), ("9" * 12, 1970), ("9" * 5000, 1970),
+     ("-1", 1970), ("\u0663" * 9, 1970), ("soon", 1970)],
+)  # fmt: skip
+def test_an_impossible_date_in_the_environment(monkeypatch, stated, year):
+    """A SOURCE_DATE_EPOCH beyond every calendar ended in a traceback of the compiler."""
+    monkeypatch.setenv("SOURCE_DATE_EPOCH", stated)
+    d = example((30.0,), lines=False, posterior="absent", refused=False)
+    raw = render_pdf(replace(d, run=replace(d.run, date="")), brief=True)
+    assert read(raw).metadata.creation_date.year == year
+
+
+@pytest.mark.parametrize(
     ("text", "date"),
     [("2026-03-12", (2026, 3, 12)), ("2026-03-12T10:00", (2026, 3, 12)), ("12.3.2026", None),
      ("", None), ("2026-13-01", None), ("2026-02-30", None)],

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import datetime
 import json
-import os
 from collections.abc import Iterator
 from functools import lru_cache
 from pathlib import Path
@@ -15,6 +14,7 @@ import typst
 from matplotlib.ft2font import FT2Font
 
 from hdetermine.errors import InputError
+from hdetermine.files.sourcedate import source_date
 from hdetermine.records.results import Determination
 from hdetermine.report.document import Document, ScanPanel, report_document
 from hdetermine.report.figure_svg import Picture
@@ -113,7 +113,8 @@ def compile_document(sources: dict[str, bytes], template: str, content: dict[str
                 files,
                 format="pdf",
                 pdf_standards=[*STANDARDS],
-                timestamp=_timestamp(),
+                # The compiler would take the clock. The run's own date goes before this one.
+                timestamp=source_date() or 0,
                 font_paths=[_font_folder()],
                 ignore_system_fonts=not machine_fonts,
             )
@@ -134,12 +135,6 @@ def run_date(text: str) -> tuple[int, int, int] | None:
     except ValueError:
         return None
     return date.year, date.month, date.day
-
-
-def _timestamp() -> int:
-    # The compiler would take the clock. The run's own date, where stated, goes before this one.
-    stated = os.environ.get("SOURCE_DATE_EPOCH", "")
-    return int(stated) if stated.isdecimal() else 0
 
 
 # --- data -------------------------------------------------------------------------------------
