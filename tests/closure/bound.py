@@ -3,9 +3,10 @@
 Cramer and Rao: no unbiased estimate spreads less than the inverse of the Fisher information
 (H. Cramer, Mathematical Methods of Statistics (1946), ch. 32). For Poisson counts with means m
 that is sum(dm/da dm/db / m) over the points. The nuisances are what the fit of one edge cannot
-know: amplitude, local slope of the continuum, level and slope of the background. Resolution,
-shape and dead time are known, in the bound as in the run sheet that the study uses. A method
-that learns the local slope from all edges together may come closer to the bound without it.
+know: amplitude, local slope of the continuum, level and slope of the background, and the
+brightness of lines that stand inside the window. Resolution, shape and dead time are known, in
+the bound as in the run sheet that the study uses. A method that learns the local slope from all
+edges together may come closer to the bound without it.
 """
 
 from __future__ import annotations
@@ -21,11 +22,12 @@ from hdetermine.planning.spectrum import SharpLine, Spectrum
 
 @dataclass(frozen=True)
 class Bent:
-    """A spectrum with its continuum scaled and tilted."""
+    """A spectrum with its continuum scaled and tilted, and its lines scaled."""
 
     inner: Spectrum
     amplitude: float = 1.0
     tilt: float = 0.0
+    brightness: float = 1.0
 
     @property
     def limit_pm(self) -> float:
@@ -36,10 +38,13 @@ class Bent:
         return self.amplitude * bend * self.inner.continuum_per_s(wavelength_pm)
 
     def lines(self) -> tuple[SharpLine, ...]:
-        return self.inner.lines()
+        return tuple(
+            replace(line, area_deg_per_s=self.brightness * line.area_deg_per_s)
+            for line in self.inner.lines()
+        )
 
 
-NUISANCES = ("amplitude", "tilt", "level", "slope")
+NUISANCES = ("amplitude", "tilt", "level", "slope", "lines")
 
 
 def cutoff_bound_deg(
@@ -75,8 +80,9 @@ def cutoff_bound_deg(
         tilt: float = 0.0,
         level: float = 0.0,
         slope: float = 0.0,
+        lines: float = 0.0,
     ) -> np.ndarray:
-        bent = Bent(maker(energy * (1.0 + shift), plan), 1.0 + amplitude, tilt)
+        bent = Bent(maker(energy * (1.0 + shift), plan), 1.0 + amplitude, tilt, 1.0 + lines)
         changed = replace(
             spectrometer,
             background_per_s=spectrometer.background_per_s + level,
@@ -87,12 +93,17 @@ def cutoff_bound_deg(
 
     steps: dict[str, float] = {
         "shift": 2e-4, "amplitude": 1e-3, "tilt": 1e-3, "level": 1e-3, "slope": 1e-3,
+        "lines": 1e-3,
     }  # fmt: skip
     centre = mean()
+    places = [spectrometer.reading_of(line.wavelength_pm) for line in maker(energy, plan).lines()]
+    unknown = [
+        name for name in nuisances if name != "lines" or any(low < place < high for place in places)
+    ]
     derivative = np.array(
         [
             _derivative(lambda x, name=name: mean(**{name: x}), steps[name])
-            for name in ("shift", *nuisances)
+            for name in ("shift", *unknown)
         ]
     )
     information = (derivative / centre) @ derivative.T
