@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import signal
 import subprocess
 import sys
@@ -97,6 +98,18 @@ def test_a_closed_pipe_is_no_traceback():
     process.stderr.close()
     assert process.wait() == 1
     assert stderr == b""
+
+
+@pytest.mark.skipif(not os.path.exists("/dev/full"), reason="the system has no /dev/full")
+def test_a_disk_that_is_full_where_the_output_is_printed():
+    """`hdetermine schema > FILE` on a full disk ended in a traceback."""
+    with open("/dev/full", "w") as full:
+        printed = subprocess.run([*MODULE, "schema"], stdout=full, stderr=subprocess.PIPE)
+        refused = subprocess.run([*MODULE, "analyse", "no/such"], stderr=full)
+    assert printed.returncode == 2
+    assert printed.stderr.startswith(b"hdetermine: The disk is full")
+    assert printed.stderr.count(b"\n") == 1
+    assert refused.returncode == 2
 
 
 STARTED = """

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import importlib
 import os
 import signal
@@ -9,6 +10,7 @@ import sys
 import threading
 from collections.abc import Callable
 from types import FrameType
+from typing import TextIO
 
 import click
 
@@ -97,15 +99,31 @@ def _status(arguments: list[str] | None) -> int:
         _say(error.format_message())
         return 2
     except BrokenPipeError:
-        # Whoever read our output has left; nothing more can be said there, at the end neither.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        _silence(sys.stdout)  # whoever read our output has left
         return 1
+    except OSError as error:
+        if error.errno not in (errno.ENOSPC, errno.EDQUOT, errno.EFBIG):
+            raise
+        _silence(sys.stdout)
+        _say(
+            "The disk is full where the output is printed or temporary files are kept: free some "
+            "space."
+        )
+        return 2
     return status if isinstance(status, int) else 0
 
 
 def _say(sentence: str) -> None:
     """Print one line that no terminal obeys, even where a folder's name would steer it."""
-    click.echo(f"hdetermine: {plain_text(sentence)}", err=True)
+    try:
+        click.echo(f"hdetermine: {plain_text(sentence)}", err=True)
+    except OSError:
+        _silence(sys.stderr)  # the exit status still tells
+
+
+def _silence(stream: TextIO) -> None:
+    """Let nothing more be said on a stream that takes nothing, at the end of Python neither."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), stream.fileno())
 
 
 def _on_signals(handler: Callable[[int, FrameType | None], None]) -> None:
