@@ -163,6 +163,8 @@ def test_two_slips_together_were_called_one(demo):
     text = feedback_text(out, "larch")
     assert "Two slips of the catalogue together would produce these numbers." in text
     assert "Both together give this number" in text
+    page = (out / "class.html").read_text()
+    assert "eV\N{NO-BREAK SPACE}s against J\N{NO-BREAK SPACE}s" in page
     assert "One slip of the catalogue would produce these numbers." in feedback_text(out, "cedar")
 
 

@@ -9,6 +9,7 @@ import json
 import re
 import shutil
 import zipfile
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -207,6 +208,30 @@ def test_no_horizontal_overflow(browser, tmp_path, page, width):
     answer = session.send("Runtime.evaluate", {
         "expression": "document.documentElement.scrollWidth", "returnByValue": True})  # fmt: skip
     assert answer["result"]["value"] == width
+
+
+@pytest.mark.browser
+@pytest.mark.parametrize("width", [390, 961, 1000, 1280])
+def test_a_long_name_pushed_the_table_off_the_page(browser, tmp_path, width):
+    shared = replace(REMARK, partner="w" * 60)
+    rows = (row("y" * 60, 6.66e-34, 1.31e-33, SLIPS, (shared,), f"No file {'x' * 60}."),)
+    text = class_page(replace(FINDING, rows=rows + FINDING.rows), TEMPLATES).decode()
+    tab = opened(browser, tmp_path, text, width)
+    assert tab.evaluate("document.documentElement.scrollWidth") == width
+    if width > 960:
+        # A short name stands on one line.
+        height = "document.querySelectorAll('#class tbody th a')[2].getClientRects().length"
+        assert tab.evaluate(height) == 1
+
+
+@pytest.mark.browser
+def test_the_last_column_of_the_comparison_was_cut_off_on_a_telephone(browser, tmp_path):
+    one = row("hazel", 6.596e-34, 5.94e-34, SLIPS)
+    text = feedback_page(one, "class", TEMPLATES).decode()
+    tab = opened(browser, tmp_path, text, 390)
+    beyond = "[...document.querySelectorAll('.scroll')].map(e => e.scrollWidth - e.clientWidth)"
+    assert "−17" in tab.locator("table").first.inner_text()  # E_n
+    assert max(tab.evaluate(beyond)) <= 0
 
 
 @pytest.mark.browser

@@ -11,7 +11,7 @@ from hdetermine import __version__
 from hdetermine.classcheck.classpicture import class_picture
 from hdetermine.classcheck.classwork import ClassFinding, GroupRow
 from hdetermine.classcheck.columns import alarm_text, count_verdicts, fault_text, feedback_name
-from hdetermine.classcheck.feedback import feedback_of
+from hdetermine.classcheck.feedback import feedback_of, kept_together
 from hdetermine.classcheck.finding import VERDICT_WORDS, Verdict
 from hdetermine.classcheck.screens import CLASS_CHANCE
 from hdetermine.report.page import render_page
@@ -120,7 +120,7 @@ def _line(row: GroupRow) -> ClassLine:
         claim=claim,
         claim_E_n=claim_E_n,
         uncertainty=uncertainty,
-        slips=tuple(slip.title for slip in found.slips),
+        slips=tuple(kept_together(slip.title) for slip in found.slips),
         alarms=alarm_text(row),
     )
 

@@ -326,15 +326,15 @@ def _slip_text(slip: NamedSlip, with_cutoffs: bool) -> SlipText:
         value = _planck(slip.predicted_J_s, 0.0)
         prediction = f"{source} it gives h{EQUALS}{value}."
     return SlipText(
-        title=_together(_capital(slip.title)),
-        sentence=_together(slip.sentence),
+        title=kept_together(_capital(slip.title)),
+        sentence=kept_together(slip.sentence),
         note=plain(slip.note),
         prediction=prediction,
-        remedy=_together(slip.remedy),
+        remedy=kept_together(slip.remedy),
     )
 
 
-def _together(text: str) -> str:
-    """Keep units and grouped digits on one line."""
+def kept_together(text: str) -> str:
+    """Keep units and grouped digits of the catalogue's words on one line."""
     text = re.sub(r"\b(J|eV) s\b", "\\1\N{NO-BREAK SPACE}s", text)
     return re.sub(r"(?<=\d) (?=\d{3}\b)", THIN, text)

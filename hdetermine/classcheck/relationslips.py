@@ -33,7 +33,7 @@ WORDINGS: dict[str, Wording] = {
     "degrees_as_radians": Wording(
         "degrees taken as radians",
         "The sine of the angle in degrees, taken as if it were in radians, gives this number.",
-        "The mode of the calculator, or the sine of the program, expects radians.",
+        "Check the angle mode of the calculator; the sine of most programs expects radians.",
     ),
     "factor_two": Wording(
         "factor 2 missing in Bragg's law, or n = 2 put for the first order",
@@ -44,7 +44,8 @@ WORDINGS: dict[str, Wording] = {
     "lattice_parameter": Wording(
         "lattice parameter used for the spacing",
         "The edge of the unit cell in place of the spacing of the planes gives this number.",
-        "For the 200 planes the spacing is half of the lattice parameter.",
+        "The spacing is the lattice parameter over the root of the sum of the squared indices: for "
+        "the 200 planes half of it.",
     ),
     "other_crystal": Wording(
         "spacing of another crystal",
