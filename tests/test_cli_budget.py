@@ -110,6 +110,18 @@ def test_each_scan_lists_all(result):
     assert call(result, "--each-scan").count("counting statistics") >= 4
 
 
+def test_a_result_of_a_stranger_does_not_steer_the_terminal(result):
+    """Units were printed as they stand in the file."""
+    document = json.loads(result.read_text())
+    for quantity in document["routes"]["linear"]["diagnostics"]["model"]["inputs"]:
+        for field in ("symbol", "unit", "source", "note"):
+            quantity[field] += "\x1b]0;x\x07\u202e"
+    result.write_text(json.dumps(document))
+    output = call(result, "--each-scan")
+    assert "kV]0;x" in output
+    assert not {"\x1b", "\x07", "\u202e"} & set(output)
+
+
 def test_narrow_terminals_leave_columns_out(result, monkeypatch):
     import rich.console
 

@@ -310,6 +310,8 @@ BROKEN = {
     "negative u": ((*MODEL, "inputs", 0, "standard_uncertainty"), -1.0, "standard_uncertainty"),
     "text": ((*MODEL, "scans", 0, "reading_deg"), "5", "reading_deg"),
     "infinite": ((*MODEL, "scans", 0, "reading_deg"), 1e999, "reading_deg"),
+    "huge u": ((*MODEL, "inputs", 0, "standard_uncertainty"), 1e308, "standard_uncertainty"),
+    "huge reading": ((*MODEL, "scans", 0, "reading_deg"), 1e308, "reading_deg"),
     "extra": ((*MODEL, "inputs", 0, "extra"), 1, "extra"),
     "correlation": ((*MODEL, "correlations", 0, "coefficient"), 1.5, "coefficient"),
     "three names": ((*MODEL, "correlations", 0, "between"), ["a", "b", "c"], "between"),

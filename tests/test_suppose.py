@@ -156,6 +156,10 @@ def test_sides_of_the_likelihood_follow_the_counting_uncertainty():
         (["tube.voltage.gain.u=-1"], "not zero or a positive"),
         (["tube.voltage.gain.u=nan"], "not zero or a positive"),
         (["tube.voltage.gain.u=inf"], "not zero or a positive"),
+        (["tube.voltage.gain.u=\u0663"], "not zero or a positive"),
+        # Their squares overflowed, which ended in a traceback.
+        (["tube.voltage.gain.u=1e308"], "no uncertainty is as large as 1e308"),
+        (["counter.dead_time_us.half_width=1e200"], "no uncertainty is as large"),
         (["tube.voltage.gain.half_width=0"], "not a positive number"),
         (["tube.voltage.gain.half_width=-2"], "not a positive number"),
         (["tube.voltage.gain.dof=0"], "not a positive number"),

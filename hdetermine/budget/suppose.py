@@ -22,6 +22,9 @@ FloatArray = NDArray[np.float64]
 
 FIELDS = ("u", "half_width", "dof")
 COUNTING_FAMILY = "scan.*.counting_deg"
+# Its square is far from overflowing, and no uncertainty in the units of the budget is as large.
+LARGEST = 1e12
+
 # The run sheet states the repeatability once; the budget has one input a scan.
 SHEET_NAMES = {"tube.voltage.repeatability_kV": "scan.*.voltage_kV"}
 
@@ -99,13 +102,15 @@ def parse_supposition(text: str, model: MeasurementModel) -> Supposition:
     if name not in known:
         raise InputError(f"--suppose {text!r}: there is no input {name!r}{_nearest(name, known)}.")
     try:
-        value = float(number)
+        value = float(number) if number.isascii() else math.nan
     except ValueError:
         value = math.nan
     allowed = value >= 0.0 if field == "u" else value > 0.0
     if not allowed or (math.isinf(value) and field != "dof"):
         least = "zero or a positive" if field == "u" else "a positive"
         raise InputError(f"--suppose {text!r}: {number.strip()!r} is not {least} number.")
+    if value > LARGEST and field != "dof":
+        raise InputError(f"--suppose {text!r}: no uncertainty is as large as {number.strip()}.")
     return Supposition(name, known[name], field, value)
 
 

@@ -9,16 +9,21 @@ import math
 from typing import Annotated, Any
 
 import numpy as np
-from pydantic import BaseModel, ConfigDict, Field, ValidationError
+from pydantic import AfterValidator, BaseModel, ConfigDict, Field, ValidationError
 
 from hdetermine.errors import InputError
-from hdetermine.files.plaintext import quoted
+from hdetermine.files.plaintext import plain_text, quoted
 from hdetermine.inference import measurement
 from hdetermine.records.quantity import Distribution, Evaluation, Quantity
 from hdetermine.records.results import MeasurementModel
 
-Finite = Annotated[float, Field(allow_inf_nan=False)]
-NotNegative = Annotated[float, Field(ge=0, allow_inf_nan=False)]
+# Far beyond every number of a model, and its square far from overflowing.
+_LARGEST = 1e12
+Finite = Annotated[float, Field(ge=-_LARGEST, le=_LARGEST, allow_inf_nan=False)]
+Spread = Annotated[float, Field(ge=0, le=_LARGEST, allow_inf_nan=False)]
+Freedom = Annotated[float, Field(ge=0, allow_inf_nan=False)]
+# Result files come from others too: their names are shown on a terminal.
+Plain = Annotated[str, AfterValidator(plain_text)]
 
 
 class _Strict(BaseModel):
@@ -26,32 +31,32 @@ class _Strict(BaseModel):
 
 
 class _Input(_Strict):
-    name: str
-    symbol: str
+    name: Plain
+    symbol: Plain
     value: Finite
-    standard_uncertainty: NotNegative
-    unit: str
+    standard_uncertainty: Spread
+    unit: Plain
     distribution: Distribution
     evaluation: Evaluation
-    degrees_of_freedom: NotNegative | None
+    degrees_of_freedom: Freedom | None
     common: bool
-    source: str
-    note: str
+    source: Plain
+    note: Plain
     is_default: bool
 
 
 class _Scan(_Strict):
-    name: str
+    name: Plain
     displayed_kV: Finite
     reading_deg: Finite
     weight: Finite
-    lower_u_deg: NotNegative | None
-    upper_u_deg: NotNegative | None
-    responses_deg: dict[str, Finite]
+    lower_u_deg: Spread | None
+    upper_u_deg: Spread | None
+    responses_deg: dict[Plain, Finite]
 
 
 class _Correlation(_Strict):
-    between: Annotated[list[str], Field(min_length=2, max_length=2)]
+    between: Annotated[list[Plain], Field(min_length=2, max_length=2)]
     coefficient: Annotated[float, Field(ge=-1, le=1)]
 
 
