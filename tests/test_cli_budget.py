@@ -154,6 +154,16 @@ def test_bad_suppositions_end_with_status_2_and_write_nothing(result, arguments,
     assert not (result.parent / "budget").exists()
 
 
+def test_a_link_in_the_place_of_the_outputs_is_not_followed(result, tmp_path):
+    (tmp_path / "run").mkdir()
+    (tmp_path / "run" / "budget").symlink_to(tmp_path / "outside")
+    beside = result.rename(tmp_path / "run" / "result.json")
+    with pytest.raises(InputError, match="link that leads out of the folder"):
+        call(beside)
+    assert not (tmp_path / "outside").exists()
+    assert "Written to" in call(beside, "-o", tmp_path / "outside")
+
+
 def test_a_folder_without_anything(tmp_path):
     with pytest.raises(InputError, match=r"holds neither run\.toml nor result\.json"):
         call(tmp_path)

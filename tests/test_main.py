@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import shutil
 import signal
 import subprocess
 import sys
@@ -59,6 +60,21 @@ def test_an_output_folder_that_is_a_file_is_told_before_the_work(command, tmp_pa
     assert "is not a folder" in refused.stderr
     assert "analysing" not in refused.stderr
     assert (tmp_path / "out").read_text() == "mine"
+
+
+@pytest.mark.parametrize(("command", "link"), [("analyse", "result"), ("check", "class_check")])
+def test_a_link_in_the_place_of_the_outputs_is_not_followed(command, link, tmp_path):
+    """The outputs of a folder from somebody else landed where a link in it pointed."""
+    folder, outside = tmp_path / "folder", tmp_path / "outside"
+    demo = "molybdenum_rocksalt" if command == "analyse" else "class_of_twelve"
+    shutil.copytree(shipped_folder("demo_runs") / demo, folder)
+    outside.mkdir()
+    (folder / link).symlink_to(outside)
+    refused = run(command, str(folder))
+    assert refused.returncode == 2
+    assert "link that leads out of the folder" in refused.stderr
+    assert refused.stderr.count("\n") == 1
+    assert list(outside.iterdir()) == []
 
 
 STEERING = "a\x1b]0;x\x07b\u202ec\nd"

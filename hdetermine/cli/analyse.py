@@ -51,6 +51,7 @@ def command(
     from hdetermine.files.atomic import write_outputs
     from hdetermine.files.plaintext import plain_text
     from hdetermine.files.resultfile import budget_csv, cutoffs_csv, result_json
+    from hdetermine.files.runfolder import output_folder
     from hdetermine.files.runsheet import read_run
     from hdetermine.report.document import report_document
     from hdetermine.report.html import render_html
@@ -60,7 +61,7 @@ def command(
 
     find_templates(templates)  # a wrong folder is told before the work, not after it
     run = read_run(run_folder)
-    target = out if out is not None else run_folder / "result"
+    target = out if out is not None else output_folder(run_folder, "result")
     write_outputs(target, {})  # so is a folder that cannot be written to
     with working("analysing") as progress:
         result = determine(

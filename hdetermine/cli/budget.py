@@ -48,12 +48,13 @@ def command(
     from hdetermine.budget.suppose import study
     from hdetermine.files.atomic import write_outputs
     from hdetermine.files.plaintext import plain_text
+    from hdetermine.files.runfolder import output_folder
     from hdetermine.report.budget_files import budget_files
 
     model, beside = _model(source)
     found = study(model, texts)
     outputs = budget_files(found, dict.fromkeys(formats or FORMATS))
-    target = out if out is not None else beside / "budget"
+    target = out if out is not None else output_folder(beside, "budget")
     write_outputs(target, outputs)
     _print(found, each_scan)
     place = plain_text(click.format_filename(target))

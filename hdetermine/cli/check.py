@@ -53,10 +53,11 @@ def command(
     from hdetermine.cli.progress import working
     from hdetermine.files.atomic import write_outputs
     from hdetermine.files.plaintext import plain_text
+    from hdetermine.files.runfolder import output_folder
     from hdetermine.report.templates import find_templates
 
     found_templates = find_templates(templates)
-    target = out if out is not None else class_folder / DEFAULT_OUT
+    target = out if out is not None else output_folder(class_folder, DEFAULT_OUT)
     if class_folder.is_dir():
         write_outputs(target, {})  # a folder that cannot be written to is told before the work
     with working("checking") as progress:

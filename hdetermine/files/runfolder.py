@@ -67,6 +67,30 @@ def _near_file(path: Path) -> str:
     return f" (did you mean {quoted(close[0])}?)" if close else ""
 
 
+def output_folder(folder: Path, name: str) -> Path:
+    """Where outputs go if nobody names a place: a sub-folder of the input's folder.
+
+    Parameters
+    ----------
+    folder : Path
+        Folder of the input.
+    name : str
+        Name of the sub-folder.
+
+    Raises
+    ------
+    InputError
+        If it is a link that leads out of the folder: whoever made the folder did not ask us.
+    """
+    target = folder / name
+    if not Path(os.path.realpath(target)).is_relative_to(os.path.realpath(folder)):
+        raise InputError(
+            f"{quoted(name)} in {quoted(folder)} is a link that leads out of the folder; remove "
+            "it, or name a folder for the output with -o."
+        )
+    return target
+
+
 @dataclass
 class RunFolder:
     """The folder of a run, and a record of what was read from it.
