@@ -207,6 +207,35 @@ def test_hostile_names_stay_inside_and_inert(tmp_path):
         assert text.count("<script>") == (page.name == "class.html")
 
 
+@pytest.mark.parametrize("far", ["1e299", "1e-299", "6.6(1)e200"])
+def test_a_claim_of_1e299_ended_the_check_of_the_whole_class(tmp_path, far):
+    top = small_class(tmp_path / "class", ["alder"])
+    (top / "claims.csv").write_text(
+        f"group,h [J s],u,wavelength 20 kV [pm]\nbirch,{far},,\ncedar,6.6e-34,1e299,\n"
+        "elder,6.6e-34,1e-36,1e299\nhazel,6.6e-34,0,62\nlarch,1e99,1e-99,\n"
+        "maple,6.6e-34,,1e-99\n"
+    )
+    assert run(top, "-o", tmp_path / "out").exception is None
+    found = groups_of(tmp_path / "out")
+    for group in ("birch", "cedar", "elder", "larch", "maple"):
+        assert found[group]["verdict"] == "nothing"
+        assert "check its exponent" in found[group]["claim_fault"]
+    assert not found["hazel"]["claim_fault"]
+
+
+def test_wavelengths_in_metres_ended_the_analysis_unexpectedly(tmp_path):
+    top = small_class(tmp_path / "class", ["alder"])
+    (top / "claims.csv").write_text(
+        "group,h [J s],u,wavelength 20 kV [pm],wavelength 30 kV [pm]\n"
+        "birch,6.6e-34,1e-36,6.1e-11,4.1e-11\ncedar,6.6e-34,1e-36,0.061,0.041\n"
+    )
+    assert run(top, "-o", tmp_path / "out").exception is None
+    found = groups_of(tmp_path / "out")
+    for group in ("birch", "cedar"):
+        assert "unexpectedly" not in found[group]["data_fault"]
+        assert [slip["codes"] for slip in found[group]["slips"]] == [["power_of_ten"]]
+
+
 def test_pages_of_groups_that_are_gone_go(tmp_path):
     top = small_class(tmp_path / "class", ["alder", "birch"])
     out = tmp_path / "out"

@@ -117,6 +117,17 @@ def test_table_is_complete_without_the_script(page):
     assert bare.count('<tr role="row">') == 6
 
 
+def test_a_negative_h_agreed_and_stood_661_uncertainties_away():
+    one = row("alder", 6.60e-34, -6.61e-34)
+    assert row("alder", 6.60e-34, 6.61e-34).finding.verdict == "agrees"
+    assert one.finding.verdict == "differs"
+    text = feedback_page(one, "c", TEMPLATES).decode()
+    assert "sign of a slope" in text
+    assert "agree within" not in text
+    alone = replace(one.finding, reanalysis=None, itself=one.finding.explanation)
+    assert alone.verdict == "inconsistent"
+
+
 def test_same_finding_same_bytes():
     for make in (class_csv, class_json, class_xlsx, lambda f: class_page(f, TEMPLATES)):
         assert make(FINDING) == make(FINDING)

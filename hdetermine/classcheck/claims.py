@@ -42,6 +42,8 @@ CUTOFF_UNITS: dict[str, tuple[str, float]] = {
 """Keys of a claimed cutoff: what each is, and its factor to pm or degrees of theta."""
 
 LARGEST_kV = 1000.0
+FARTHEST_J_s, FARTHEST_CUTOFF, FARTHEST_RATIO = 1e80, 1e18, 1e25
+"""No two slips lead farther out than these, or their reciprocals: h, a cutoff, u over h."""
 _TOP_KEYS = ("schema", "group", "h", "cutoff", "note")
 _H_KEYS = ("value", "unit", "u", "expanded", "k", "note")
 
@@ -197,6 +199,11 @@ def build_claim(
     for what, number in (("standard", standard), ("expanded", expanded)):
         if number is not None and number.value < 0.0:
             raise InputError(f"{where}: the {what} uncertainty cannot be negative.")
+    _refuse_far(h, FARTHEST_J_s, f"{where}, h")
+    for name, number in (("u", standard), ("U", expanded)):
+        if number is not None and h is not None:
+            ratio = Numeral(number.value / abs(h.value), 0.0)
+            _refuse_far(ratio, FARTHEST_RATIO, f"{where}, {name} over h")
     if k is not None and not 0.1 <= k.value <= 100.0:
         raise InputError(f"{where}: the coverage factor k = {k.value:g} cannot be; 2 is usual.")
     if k is not None and expanded is None and k.value != 1.0:
@@ -205,6 +212,12 @@ def build_claim(
         )
     unit = parse_unit(str(unit_text), where) if unit_text is not None else "J s"
     return Claim(group, source, h, unit, standard, expanded, 2.0 if k is None else k.value)
+
+
+def _refuse_far(number: Numeral | None, farthest: float, where: str) -> None:
+    """Refuse a number of an exponent that nothing explains: ratios and squares stay finite."""
+    if number is not None and number.value and not 1.0 / farthest < abs(number.value) < farthest:
+        raise InputError(f"{where}: {number.value:g} cannot be; check its exponent.")
 
 
 def claimed_cutoff(
@@ -228,6 +241,7 @@ def claimed_cutoff(
             raise InputError(f"{where}: the {what} is given twice; leave one out.")
         if not number.value > 0.0 or (what == "angle" and number.value >= 180.0):
             raise InputError(f"{where}: {key} = {number.value:g} cannot be a cutoff.")
+        _refuse_far(number, FARTHEST_CUTOFF, f"{where}, {key}")
         found[what] = Numeral(number.value * factor, number.step * factor)
     return ClaimedCutoff(voltage_kV, found.get("wavelength"), found.get("angle"))
 

@@ -130,6 +130,8 @@ def _summary(found: GroupFinding) -> str:
     if found.verdict in ("consistent", "inconsistent"):
         own = digits(found.planck_of_cutoffs_J_s, 4, "J s").text
         parts.append(f"They give h{EQUALS}{own}.")
+    if found.claim is not None and found.claim.value_J_s < 0.0:
+        parts.append("A negative h carries the sign of a slope.")
     if found.alarms:
         parts.append("The screening of the counts asks for a second look; see the table below.")
     return " ".join(part for part in parts if part)

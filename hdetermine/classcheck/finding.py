@@ -134,6 +134,8 @@ class GroupFinding:
             return "differs"
         if self.explanation.slips:
             return "slip"
+        if self.claim.value_J_s < 0.0:
+            return "differs"  # sizes are compared as logarithms, which do not see the sign
         if self.statement:
             return "statement" if self.explanation.ordinary else "differs"
         if self.explanation.agrees:
@@ -143,7 +145,8 @@ class GroupFinding:
     def _alone(self) -> Verdict:
         if self.itself is None or not self.itself.comparable:
             return "alone"
-        return "consistent" if self.itself.agrees else "inconsistent"
+        positive = self.claim is None or not self.claim.value_J_s < 0.0
+        return "consistent" if self.itself.agrees and positive else "inconsistent"
 
     @property
     def deviation(self) -> float:

@@ -36,6 +36,8 @@ LARGEST_LOG = 700.0
 """Beyond the exponential of this no float reaches."""
 LARGEST_STEP = 0.3
 """Logarithmic distance over which a linearisation is moved."""
+LARGEST_ZERO = 10.0
+"""Largest relative standard uncertainty of a reading from that of the zero."""
 ZERO_READING_U_deg = 0.01
 """How well people take a zero over from the lines, besides what the re-analysis states."""
 
@@ -265,8 +267,10 @@ def _covariances(
     evidence, rows = alignment.evidence, alignment.rows
     response = prediction.response
     m = response.shape[0]
-    per_zero = np.sum(response * np.radians(1.0) / np.tan(np.radians(evidence.angle_deg)), axis=1)
     zero_u = np.hypot(evidence.zero_u_deg, ZERO_READING_U_deg)
+    per_degree = np.radians(1.0) / np.tan(np.radians(evidence.angle_deg))
+    # Wavelengths in a wrong power of ten put a claim's own angles far below the zero's doubt.
+    per_zero = np.sum(response * np.minimum(per_degree, LARGEST_ZERO / zero_u), axis=1)
     fixed = (response * own**2) @ response.T + zero_u**2 * np.outer(per_zero, per_zero)
     fixed = fixed + np.diag(rounding**2)
     if rows.with_h and not (rows.angles.size or rows.wavelengths.size):
