@@ -28,7 +28,14 @@ from typing import Any, cast
 from hdetermine.classcheck.claim import JOULES, Claim, ClaimedCutoff, PlanckUnit
 from hdetermine.classcheck.numeral import Numeral, read_numeral
 from hdetermine.errors import InputError
-from hdetermine.files.limits import MAX_NESTING, MAX_SCANS, MAX_SHEET_BYTES, check_limit
+from hdetermine.files.limits import (
+    MAX_LINE_CHARACTERS,
+    MAX_LINE_DOTS,
+    MAX_NESTING,
+    MAX_SCANS,
+    MAX_SHEET_BYTES,
+    check_limit,
+)
 from hdetermine.files.plaintext import quoted
 from hdetermine.files.runfolder import read_bytes
 
@@ -98,6 +105,10 @@ def _load(path: Path, shown: str) -> dict[str, Any]:
         text = content.decode("utf-8-sig")
     except UnicodeDecodeError as error:
         raise InputError(f"{shown} is not UTF-8 text; save it as UTF-8.") from error
+    for number, line in enumerate(text.split("\n"), start=1):
+        check_limit(len(line), MAX_LINE_CHARACTERS, f"{shown}, line {number}", "characters")
+        # The reader's time and memory grow with the square of the parts of a key.
+        check_limit(line.count("."), MAX_LINE_DOTS, f"{shown}, line {number}", "dots")
     check_limit(_nesting(text), MAX_NESTING, shown, "nested brackets")
     try:
         return tomllib.loads(text, parse_float=_Written)

@@ -28,6 +28,9 @@ MAX_SHEETS = 100
 MAX_LINE_CHARACTERS = 20_000
 """Length of one line of a text file."""
 
+MAX_LINE_DOTS = 1_000
+"""Dots in one line of a run sheet or claim."""
+
 MAX_RESULT_BYTES = 64_000_000
 """Size of a result file that the budget is worked out from again, bytes."""
 

@@ -14,6 +14,7 @@ from hdetermine.errors import InputError
 from hdetermine.files.apparatus import apparatus_of
 from hdetermine.files.limits import (
     MAX_LINE_CHARACTERS,
+    MAX_LINE_DOTS,
     MAX_NESTING,
     MAX_RUN_POINTS,
     MAX_SHEET_BYTES,
@@ -95,7 +96,7 @@ def parse_sheet(data: bytes, where: str) -> dict[str, Any]:
         ) from None
     for number, line in enumerate(text.split("\n"), start=1):
         check_limit(len(line), MAX_LINE_CHARACTERS, f"{where}, line {number}", "characters")
-        check_limit(line.count("."), 1000, f"{where}, line {number}", "dots")
+        check_limit(line.count("."), MAX_LINE_DOTS, f"{where}, line {number}", "dots")
     try:
         content = tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
