@@ -8,9 +8,11 @@ import io
 import json
 import re
 import shutil
+import signal
 import subprocess
 import sys
 import zipfile
+from concurrent.futures import ProcessPoolExecutor
 from pathlib import Path
 
 import openpyxl
@@ -280,6 +282,26 @@ def dying_worker(task):
     from hdetermine.classcheck.finding import GroupFinding
 
     return GroupFinding(name=task.group.name)
+
+
+def test_workers_start_whole_before_an_interruption_is_obeyed(monkeypatch):
+    """One left in the middle of its start printed a traceback (found by the kill campaign)."""
+    started = []
+    submit = ProcessPoolExecutor.submit
+
+    def submit_interrupted(pool, *arguments):
+        signal.raise_signal(signal.SIGINT)
+        future = submit(pool, *arguments)
+        blocked = signal.pthread_sigmask(signal.SIG_BLOCK, set())
+        started.append(signal.SIGINT in blocked)
+        return future
+
+    monkeypatch.setattr(ProcessPoolExecutor, "submit", submit_interrupted)
+    tasks = [GroupTask(i, Group(f"group {i}", None), 1) for i in range(2)]
+    with pytest.raises(KeyboardInterrupt):
+        check_groups(tasks, 2, lambda *_: None, dying_worker)
+    assert started == [True], "started once, deaf to the interrupts of a terminal, then stopped"
+    assert signal.SIGINT not in signal.pthread_sigmask(signal.SIG_BLOCK, set())
 
 
 def test_a_worker_that_dies_takes_one_group_with_it():

@@ -207,3 +207,21 @@ def test_an_interruption_that_python_drops_is_asked_for_again():
     assert ended.returncode == 130
     assert "Traceback" not in ended.stderr
     assert "interrupted" in ended.stderr
+
+
+LATE = """
+import atexit, os, signal, sys
+import hdetermine.cli as cli
+
+cli._status = lambda arguments: 0
+atexit.register(lambda: os.kill(os.getpid(), signal.{name}))
+cli.main(["--version"])
+"""
+
+
+@pytest.mark.parametrize("name", ["SIGINT", "SIGTERM"])
+def test_an_interruption_after_the_work_changes_nothing(name):
+    """While Python ended, the system's own handlers were back (found by the kill campaign)."""
+    code = LATE.format(name=name)
+    ended = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True)
+    assert (ended.returncode, ended.stderr) == (0, "")

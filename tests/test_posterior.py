@@ -257,6 +257,19 @@ def test_a_spacing_that_may_vanish_is_refused():
         posterior_route(model, 1)
 
 
+def test_an_interruption_of_a_chain_prints_no_traceback(capfd, monkeypatch):
+    """emcee's own wrapper of a density prints one (found by the kill campaign)."""
+    density = posterior_density(make_model(2))
+
+    def interrupted(_density, _places):
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(type(density), "__call__", interrupted)
+    with pytest.raises(KeyboardInterrupt):
+        run_chain(density, np.random.SeedSequence(1), 3, 100)
+    assert capfd.readouterr() == ("", "")
+
+
 def test_one_walker_count_fits_all_dimensions():
     density = posterior_density(make_model(2))
     chain = run_chain(density, np.random.SeedSequence(1), 3, 20)

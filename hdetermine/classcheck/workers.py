@@ -13,6 +13,7 @@ from contextlib import contextmanager
 
 from hdetermine.classcheck.finding import GroupFinding
 from hdetermine.classcheck.groupcheck import GroupTask, check_group, unexpected
+from hdetermine.files.interruption import held_signals
 
 THREAD_VARIABLES = ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS")
 Progress = Callable[[str, int, int], None]
@@ -77,7 +78,8 @@ def _run(
         futures: dict[Future[GroupFinding], int] = {}
         for index in indices:
             try:
-                futures[pool.submit(worker, tasks[index])] = index
+                with _spawning():
+                    futures[pool.submit(worker, tasks[index])] = index
             except BrokenProcessPool:
                 broken.append(index)
         pending = set(futures)
@@ -108,6 +110,20 @@ def _end(pool: ProcessPoolExecutor) -> None:
         process.terminate()
     for process in processes:
         process.join()
+
+
+@contextmanager
+def _spawning() -> Iterator[None]:
+    """Let a process start whole, and deaf to the interrupts that a terminal sends to all.
+
+    A process that its parent leaves in the middle of that ends with a traceback of its own.
+    """
+    with held_signals():
+        before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+        try:
+            yield
+        finally:
+            signal.pthread_sigmask(signal.SIG_SETMASK, before)
 
 
 def _start_worker() -> None:

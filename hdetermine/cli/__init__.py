@@ -78,12 +78,12 @@ def main(arguments: list[str] | None = None) -> None:
         sys.unraisablehook = _unheard
         _on_signals(_interrupt)
         status = _status(arguments)
-        _on_signals(_too_late)
+        _on_signals(signal.SIG_IGN)  # the exit status is settled
     except BaseException as fault:
         # Interrupted inside an import, a process can fail with an error of any kind.
         if not (_asked.is_set() or isinstance(fault, (KeyboardInterrupt, click.Abort))):
             raise
-        _on_signals(_too_late)
+        _on_signals(signal.SIG_IGN)
         click.echo("hdetermine: interrupted; no output is half-written.", err=True)
         status = INTERRUPTED
     sys.exit(status)
@@ -126,7 +126,9 @@ def _silence(stream: TextIO) -> None:
     os.dup2(os.open(os.devnull, os.O_WRONLY), stream.fileno())
 
 
-def _on_signals(handler: Callable[[int, FrameType | None], None]) -> None:
+def _on_signals(
+    handler: Callable[[int, FrameType | None], None] | signal.Handlers,
+) -> None:
     for number in (signal.SIGINT, signal.SIGTERM):
         if signal.getsignal(number) is not signal.SIG_IGN:  # as under nohup: then it stays so
             signal.signal(number, handler)
@@ -145,7 +147,3 @@ def _unheard(dropped: sys.UnraisableHookArgs) -> None:
         again.start()
     else:
         sys.__unraisablehook__(dropped)
-
-
-def _too_late(_number: int, _frame: FrameType | None) -> None:
-    """The work is done, and its exit status is settled."""

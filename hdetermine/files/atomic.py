@@ -23,15 +23,13 @@ import fcntl
 import json
 import os
 import shutil
-import signal
-import threading
 import time
 from collections.abc import Collection, Iterable, Iterator, Mapping
 from contextlib import contextmanager, suppress
 from pathlib import Path, PurePosixPath
-from types import FrameType
 
 from hdetermine.errors import InputError
+from hdetermine.files.interruption import Interruption, held_signals
 
 STAGED = ".hdetermine-staged"
 READY = ".hdetermine-ready"
@@ -69,7 +67,7 @@ def write_outputs(
         _checked(name)
     gone = sorted(set(retired) - set(outputs))
     with (
-        _held_signals() as interrupted,
+        held_signals() as interrupted,
         _sentences(target),
         _made_folder(target),
         _lock(target, interrupted),
@@ -84,41 +82,6 @@ def write_outputs(
             _clear(target / STAGED)
         _sync_folder(target)
         _finish(target)
-
-
-class _Interruption:
-    """The signal that asked to stop, if one did."""
-
-    def __init__(self) -> None:
-        self.number: int | None = None
-
-    def raise_if_set(self) -> None:
-        if self.number is not None:
-            raise KeyboardInterrupt
-
-
-@contextmanager
-def _held_signals() -> Iterator[_Interruption]:
-    """Take note of SIGINT and SIGTERM instead of being torn out of the middle of a step."""
-    interruption = _Interruption()
-    if threading.current_thread() is not threading.main_thread():
-        yield interruption  # Python delivers signals to the main thread only
-        return
-
-    def note(number: int, _frame: FrameType | None) -> None:
-        interruption.number = number
-
-    earlier = {}
-    try:
-        for number in (signal.SIGINT, signal.SIGTERM):
-            if signal.getsignal(number) not in (signal.SIG_IGN, None):
-                earlier[number] = signal.signal(number, note)
-        yield interruption
-    finally:
-        for number, handler in earlier.items():
-            signal.signal(number, handler)
-    if interruption.number is not None:
-        signal.raise_signal(interruption.number)
 
 
 @contextmanager
@@ -173,7 +136,7 @@ def _made_folder(target: Path) -> Iterator[None]:
 
 
 @contextmanager
-def _lock(target: Path, interrupted: _Interruption) -> Iterator[None]:
+def _lock(target: Path, interrupted: Interruption) -> Iterator[None]:
     """Hold the folder's lock file; it vanishes with the lock."""
     path = target / LOCK
     deadline = time.monotonic() + WAIT_FOR_LOCK_s
@@ -214,7 +177,7 @@ def _is_same_file(descriptor: int, path: Path) -> bool:
 
 
 def _stage(
-    target: Path, outputs: Mapping[str, bytes], retired: list[str], interrupted: _Interruption
+    target: Path, outputs: Mapping[str, bytes], retired: list[str], interrupted: Interruption
 ) -> None:
     staged = target / STAGED
     staged.mkdir()

@@ -129,6 +129,8 @@ def run_chain(
         moves=list(zip(moves, MOVE_SHARES.values(), strict=True)),
         vectorize=True,
     )
+    # The wrapper that emcee puts around a density prints a traceback of an interruption, too.
+    sampler.log_prob_fn = density
     for done, _ in enumerate(sampler.sample(state, iterations=steps), start=1):
         if progress is not None and (done % PROGRESS_EVERY == 0 or done == steps):
             progress("posterior", done, steps)
