@@ -2,13 +2,19 @@
 
 from __future__ import annotations
 
+import functools
 import io
+from dataclasses import replace
 
 import openpyxl
+from closure.settings import BASE
 from odf.opendocument import OpenDocumentSpreadsheet
 from odf.table import Table, TableCell, TableRow
 from odf.text import P
 from sheet_text import SHEET
+
+from hdetermine.planning.runfiles import run_files
+from hdetermine.planning.simulation import simulate_run
 
 POINTS = [(5.0 + i / 10.0, (7 * i * i) % 41) for i in range(30)]
 
@@ -44,6 +50,14 @@ def xlsx() -> bytes:
     stream = io.BytesIO()
     book.save(stream)
     return stream.getvalue()
+
+
+@functools.cache
+def small_run() -> dict[str, bytes]:
+    """A simulated run of three scans with their edges, file by file."""
+    setting = replace(BASE, voltages_kV=(25.0, 29.0, 34.0), from_deg=2.6, to_deg=7.8)
+    _, simulated = simulate_run(setting.run_sheet(), setting.truth_table(1), 1)
+    return run_files(simulated)
 
 
 CLAIM_SHEET = """\

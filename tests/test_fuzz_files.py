@@ -13,13 +13,14 @@ from pathlib import Path
 import file_specimens
 import numpy as np
 import pytest
-from file_mutations import damaged, damaged_archive
+from file_mutations import change_digits, damaged, damaged_archive
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 from sheet_text import SHEET, write_run
 
 from hdetermine.classcheck.claimalone import check_alone
 from hdetermine.classcheck.groups import find_groups
+from hdetermine.determination import determine
 from hdetermine.errors import InputError
 from hdetermine.files.draft import draft_sheet
 from hdetermine.files.plaintext import plain_text
@@ -163,6 +164,25 @@ def test_drafts_of_damaged_tables(seed):
         (folder / "run.toml").write_text(text, encoding="utf-8")
         with pytest.raises(InputError, match='it still says "\\?"'):
             read_run(folder)
+
+
+@settings(COMMON, max_examples=20)
+@given(st.integers(0, 2**32))
+def test_damaged_runs_are_analysed_or_refused(seed):
+    chance = random.Random(seed)
+    files = dict(file_specimens.small_run())
+    name = chance.choice(sorted(name for name in files if name.endswith(".csv")))
+    files[name] = change_digits(files[name], chance)
+    with tempfile.TemporaryDirectory() as folder:
+        for path, content in files.items():
+            (Path(folder) / path).write_bytes(content)
+        try:
+            found = determine(read_run(folder), posterior=False, monte_carlo=False)
+        except InputError as error:
+            assert_plain(str(error))
+        else:
+            assert found.h.value_J_s > 0.0
+            assert 0.0 < found.h.standard_uncertainty_J_s < np.inf
 
 
 def test_specimens_are_sound():

@@ -34,6 +34,7 @@ HANGS_s = 1800.0
 """A thousand inputs that take this long hang."""
 
 KINDS = ("run sheet", "table", "table", "xlsx", "ods", "draft", "bytes")
+ANALYSED = "analysis"
 CLAIM_KINDS = ("claim sheet", "claim table", "claim table", "claims xlsx")
 
 
@@ -48,7 +49,9 @@ def one_input(seed: int, folder: Path) -> tuple[str, str]:
     from hdetermine.files.runsheet import read_run
 
     chance = random.Random(seed)
-    kind = chance.choice((*KINDS, *CLAIM_KINDS))
+    kind = chance.choice((*KINDS, *CLAIM_KINDS, ANALYSED))
+    if kind == ANALYSED:
+        return kind, one_analysis(chance, folder)
     if kind in CLAIM_KINDS:
         return kind, one_class_of_claims(kind, chance, folder)
     more, text = chance.choice(file_specimens.TABLES)
@@ -82,6 +85,33 @@ def check_sentence(text: str) -> None:
 
     assert text == plain_text(text), "not plain text"
     assert text.endswith("."), "not a sentence"
+
+
+def one_analysis(chance: random.Random, folder: Path) -> str:
+    """Damage one file of a whole run, and determine h from what can be read of it."""
+    import file_specimens
+    from file_mutations import change_digits, damaged
+
+    from hdetermine.determination import determine
+    from hdetermine.errors import InputError
+    from hdetermine.files.runsheet import read_run
+
+    top = folder / "whole run"
+    top.mkdir(exist_ok=True)
+    files = dict(file_specimens.small_run())
+    name = chance.choice(sorted(name for name in files if name.endswith((".csv", "run.toml"))))
+    # Changed digits are read most often, and then there is something to determine.
+    files[name] = chance.choice((change_digits, change_digits, damaged))(files[name], chance)
+    for name, content in files.items():
+        (top / name).write_bytes(content)
+    try:
+        found = determine(read_run(top), posterior=False, monte_carlo=False)
+    except InputError as error:
+        check_sentence(str(error))
+        return "refused"
+    assert 0.0 < found.h.standard_uncertainty_J_s < float("inf"), "no sound uncertainty"
+    assert found.h.value_J_s > 0.0, "no sound value"
+    return "determined"
 
 
 def one_class_of_claims(kind: str, chance: random.Random, folder: Path) -> str:
