@@ -29,14 +29,14 @@ def test_linear_counts_if_validated():
     name, reason = choose_route({"linear": route("linear"), "monte_carlo": carlo(True)})
     assert name == "linear"
     assert "passes the validation" in reason
-    assert "0.010 u, with 0.017 u allowed" in reason
+    assert "0.0100 u, with 0.0167 u allowed" in reason
 
 
 def test_monte_carlo_counts_otherwise():
     name, reason = choose_route({"linear": route("linear"), "monte_carlo": carlo(False)})
     assert name == "monte_carlo"
     assert "fails the validation" in reason
-    assert "0.030 u" in reason
+    assert "0.0300 u" in reason
     name, _ = choose_route({"linear": route("linear"), "monte_carlo": carlo(True)}, False)
     assert name == "monte_carlo"
 

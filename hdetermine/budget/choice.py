@@ -72,7 +72,7 @@ def _pick(routes: Mapping[str, Route], linear_validated: bool | None) -> tuple[R
         worst = max(validation["low_difference"], validation["high_difference"]) / u
         figures = (
             f": the ends of its interval differ from those of the Monte Carlo route by up to "
-            f"{worst:.3f} u, with {validation['tolerance'] / u:.3f} u allowed"
+            f"{worst:.4f} u, with {validation['tolerance'] / u:.4f} u allowed"
         )
     if passed:
         return "linear", (

@@ -158,7 +158,7 @@ def limiting_sentence(budget: Budget) -> str:
         limits += f", followed by {_listed(following)}"
     return (
         f"{budget.measurand} is limited by {limits}; {_percent(common_share(budget))} of the "
-        "variance is common to all voltages, and more voltages would not lower that."
+        "variance is common to all voltages: more voltages would not average it out."
     )
 
 

@@ -107,11 +107,10 @@ def _with_rows_for(cutoffs: tuple[ClaimedCutoff, ...], evidence: Evidence) -> Ev
     displayed = np.concatenate([evidence.displayed_kV, missing])
     order = np.argsort(displayed, kind="stable")
     new = np.full(len(missing), np.nan)
-    fit = np.polynomial.Polynomial.fit(
-        evidence.displayed_kV, evidence.supplied_kV, 1 if evidence.size > 1 else 0
-    )
-    supplied = fit(np.array(missing))
-    if evidence.size == 1:
+    if evidence.size > 1:
+        line = np.polynomial.Polynomial.fit(evidence.displayed_kV, evidence.supplied_kV, 1)
+        supplied = line(np.array(missing))
+    else:  # one point has no domain to fit over
         supplied = np.array(missing) * evidence.supplied_kV[0] / evidence.displayed_kV[0]
     wavelength = evidence.planck_J_s / PLANCK_PER_SLOPE / supplied
     angle = glancing_angle_deg(wavelength, evidence.spacing_pm)

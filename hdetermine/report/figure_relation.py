@@ -83,7 +83,8 @@ def relation_picture(d: Determination) -> Picture | None:
         "included) with the line through the origin (solid) and the line with a free intercept "
         "(dashed). Lower part: residuals from the line through the origin; thick bars: standard "
         "uncertainty from counting and choice of fit alone, by which the points scatter; thin "
-        "bars with caps: with everything, much of which moves all points together."
+        "bars with caps: with all that bears on the wavelength, much of which moves all points "
+        "together. The voltage is in neither."
     )
     return picture(figure, "relation", alt, caption)
 

@@ -126,9 +126,10 @@ def cutoff_rows(d: Determination) -> Table:
         numeric=(1, 2, 3, 4, 5, 6, 7),
         note="Voltage: as displayed. Reading: the cutoff on the goniometer; θ: less the zero "
         "offset. hᵢ: h from this scan alone. In parentheses: the standard uncertainty, of the "
-        "reading from counting and the choice of fit alone, of λₘᵢₙ and hᵢ from everything, much "
-        "of it common to all scans. Shift: how far h moves, in units of u(h), when this scan is "
-        "left out. Deviance of the fit of most weight, and its degrees of freedom ν.",
+        "reading from counting and the choice of fit alone, of λₘᵢₙ from all that bears on the "
+        "wavelength, of hᵢ from the voltage too, much of it common to all scans. Shift: how far "
+        "h moves, in units of u(h), when this scan is left out. Deviance of the fit "
+        "of most weight, and its degrees of freedom ν.",
     )  # fmt: skip
 
 

@@ -79,7 +79,7 @@ def line_rows(d: Determination) -> Table | None:
         (words(line.scan), words(line.label), Cell(f"{line.order}", float(line.order)),
          with_uncertainty(line.wavelength_pm, line.wavelength_u_pm),
          with_uncertainty(line.reading_deg, line.reading_u_deg),
-         decimals(line.expected_deg, 3), decimals(line.residual_deg, 4, signed=True),
+         decimals(line.expected_deg, 4), decimals(line.residual_deg, 4, signed=True),
          words("yes" if line.used else f"no: {line.reason or 'left out'}"))
         for line in d.angle_scale.lines
     ]  # fmt: skip

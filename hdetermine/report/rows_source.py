@@ -87,11 +87,17 @@ def sheet_rows(d: Determination) -> Table | None:
     """The run sheet as it was read, defaults marked; None for a run made without one."""
     if not d.run.sheet:
         return None
+    given = {one.name: one.source or one.note for one in d.run.apparatus.quantities()}
     rows = [
-        (words(entry.key), Cell(_typeset(entry)), Cell("default" if entry.is_default else "stated"))
+        (
+            words(entry.key),
+            Cell(_typeset(entry)),
+            Cell("default" if entry.is_default else "stated"),
+            words(given.get(entry.key, "") or NONE),
+        )
         for entry in d.run.sheet
     ]
-    return table("sheet", "Run sheet as read", ("key", "understood as", "origin"), rows)
+    return table("sheet", "Run sheet as read", ("key", "understood as", "origin", "source"), rows)
 
 
 def _typeset(entry: SheetEntry) -> str:
