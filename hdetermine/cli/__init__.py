@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import atexit
 import errno
 import importlib
 import os
@@ -75,15 +76,17 @@ def main(arguments: list[str] | None = None) -> None:
     130: interrupted.
     """
     try:
+        # While Python ends it drops handlers, and keeps only what is ignored.
+        atexit.register(_on_signals, signal.SIG_IGN)
         sys.unraisablehook = _unheard
         _on_signals(_interrupt)
         status = _status(arguments)
-        _on_signals(signal.SIG_IGN)  # the exit status is settled
+        _on_signals(_too_late)
     except BaseException as fault:
         # Interrupted inside an import, a process can fail with an error of any kind.
         if not (_asked.is_set() or isinstance(fault, (KeyboardInterrupt, click.Abort))):
             raise
-        _on_signals(signal.SIG_IGN)
+        _on_signals(_too_late)
         click.echo("hdetermine: interrupted; no output is half-written.", err=True)
         status = INTERRUPTED
     sys.exit(status)
@@ -147,3 +150,7 @@ def _unheard(dropped: sys.UnraisableHookArgs) -> None:
         again.start()
     else:
         sys.__unraisablehook__(dropped)
+
+
+def _too_late(_number: int, _frame: FrameType | None) -> None:
+    """The work is done, and its exit status is settled."""
