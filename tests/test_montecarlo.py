@@ -178,7 +178,7 @@ def test_gaussian_model_gives_the_linear_result():
     low, high = route.interval_95_J_s
     assert high - low == pytest.approx(2 * linear.expanded_uncertainty, rel=0.01)
     json.dumps(route.diagnostics, allow_nan=False)
-    assert route.diagnostics["draws"] == 500_000
+    assert route.diagnostics["draws"] == 300_000
 
 
 def test_a_dominant_rectangular_input_fails_the_validation():

@@ -35,7 +35,7 @@ MAXIMUM_DRAWS = 2_000_000
 # JCGM 101:2008, 8.2: the judge should be five times finer than the tolerance it judges by. For
 # h that can take more draws than anybody waits for; the spreads reached are reported.
 VALIDATING_SHARE = 0.2
-VALIDATING_DRAWS = 500_000
+VALIDATING_DRAWS = 300_000
 
 
 @dataclass(frozen=True, slots=True, eq=False)
