@@ -56,6 +56,18 @@ def test_zero_width_and_kernel_are_found(case):
         assert abs(np.mean(values)) < 2.0, name
 
 
+def test_a_box_is_told_and_leaves_the_zero_open_by_part_of_a_step():
+    """Between two steps a flat top may stand anywhere: 0.15 of a step at least remains."""
+    for seed in (1, 2, 3):
+        run, simulation = copper(seed, {"kernel": "box", "resolution_deg": 0.3})
+        scale, truth = angle_scale(run), simulation.truth
+        assert scale.kernel.value > 1.7
+        assert scale.resolution.value == pytest.approx(0.3, rel=0.1)
+        u = scale.zero.standard_uncertainty
+        assert 0.1 * run.apparatus.goniometer.step_deg < u < 0.03
+        assert abs(scale.zero.value - truth.zero_deg) < 3.0 * u
+
+
 def test_spacing_and_zero_together():
     """Two orders, far apart: the lines tell the spacing better than a loosely stated one."""
     run, simulation = copper(2, {"spacing_pm": 201.75})

@@ -4,8 +4,12 @@ from __future__ import annotations
 
 import io
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 from .record import RunRecord
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
 
 INSIDE, OUTSIDE = "#1b5e7a", "#c8501e"
 
@@ -39,7 +43,7 @@ def picture(records: Sequence[RunRecord], form: str = "svg", most: int = 40) -> 
     return stream.getvalue()
 
 
-def _draw(axes, rows, title) -> None:  # type: ignore[no-untyped-def]
+def _draw(axes: Axes, rows: Sequence[tuple[float, float, float, float] | None], title: str) -> None:
     covered = 0
     for index, row in enumerate(rows, start=1):
         if row is None:
